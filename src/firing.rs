@@ -1,0 +1,201 @@
+//! The reduced firing: figures, checks, provenance; what result.json holds and what is read back from it.
+
+use crate::log::{Records, Repair};
+use serde::{Deserialize, Serialize};
+use std::collections::BTreeMap;
+
+/// Name and version of the shape of result.json.
+pub const SCHEMA: &str = "burntally.result/1";
+
+/// A figure: value in SI with a UCUM unit code, its standard uncertainty and its 95 % interval; null where not known.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Figure {
+    pub value: f64,
+    pub unit: String,
+    pub standard_uncertainty: Option<f64>,
+    pub interval_95: Option<[f64; 2]>,
+    /// `lower` where the true value is at least this.
+    #[serde(skip_serializing_if = "Option::is_none", default)]
+    pub bound: Option<String>,
+    /// Where the value came from, when that is not the usual way.
+    #[serde(skip_serializing_if = "Option::is_none", default)]
+    pub source: Option<String>,
+}
+
+/// Every figure of the contract; `None` (null) where it is not known.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+pub struct Quantities {
+    pub total_impulse: Option<Figure>,
+    pub burn_impulse: Option<Figure>,
+    pub burn_time: Option<Figure>,
+    pub action_time: Option<Figure>,
+    pub average_thrust: Option<Figure>,
+    pub peak_thrust: Option<Figure>,
+    pub initial_thrust: Option<Figure>,
+    pub rise_time: Option<Figure>,
+    pub ignition_delay: Option<Figure>,
+    pub propellant_mass: Option<Figure>,
+    /// mass_before - mass_after, where both were weighed.
+    pub expelled_mass: Option<Figure>,
+    pub specific_impulse: Option<Figure>,
+    pub effective_exhaust_velocity: Option<Figure>,
+    pub peak_pressure: Option<Figure>,
+    pub mean_pressure: Option<Figure>,
+    pub characteristic_velocity: Option<Figure>,
+    pub thrust_coefficient: Option<Figure>,
+    pub burn_rate: Option<Figure>,
+    /// Impulse added beyond the end of a record that ends before the thrust does (part of total_impulse).
+    pub extrapolated_impulse: Option<Figure>,
+}
+
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+pub struct RunRecord {
+    pub id: String,
+    pub pour: Option<String>,
+    pub date: Option<String>,
+    pub conditions: serde_json::Map<String, serde_json::Value>,
+    pub tags: serde_json::Map<String, serde_json::Value>,
+}
+
+/// Log time of the burn's landmarks, s.
+#[derive(Debug, Clone, Copy, PartialEq, Default, Serialize, Deserialize)]
+pub struct BurnTimes {
+    pub thrust_start_s: f64,
+    pub start_s: f64,
+    pub end_s: f64,
+    pub thrust_end_s: f64,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+#[serde(rename_all = "lowercase")]
+pub enum BurstKind {
+    Burn,
+    Chuff,
+    Knock,
+    Ejection,
+    Other,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Burst {
+    pub start_s: f64,
+    pub end_s: f64,
+    /// N.s
+    pub impulse: f64,
+    /// N
+    pub peak: f64,
+    pub kind: BurstKind,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct MotorClass {
+    pub letter: String,
+    pub designation: String,
+    /// 0 at the lower edge of the band, 1 at the upper.
+    pub position: f64,
+    pub probability: Option<BTreeMap<String, f64>>,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct StandRecord {
+    pub natural_frequency_hz: f64,
+    pub damping_ratio: Option<f64>,
+    pub source: String,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct BudgetLine {
+    pub source: String,
+    /// In the unit of the figure.
+    pub standard_uncertainty: f64,
+    /// Share of the figure's variance, 0 to 1.
+    pub share: f64,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+#[serde(rename_all = "lowercase")]
+pub enum Status {
+    Pass,
+    Caution,
+    Fail,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Check {
+    /// One of the ids of the contract.
+    pub id: String,
+    pub status: Status,
+    pub message: String,
+}
+
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct InputFile {
+    pub file: String,
+    pub sha256: String,
+}
+
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+pub struct Provenance {
+    pub program: String,
+    pub version: String,
+    pub inputs: Vec<InputFile>,
+    pub records: Records,
+    pub repairs: Vec<Repair>,
+    /// What was found, chosen or assumed on the way, one sentence each.
+    pub findings: Vec<String>,
+}
+
+/// How the curve was conditioned.
+#[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
+pub struct Conditioning {
+    pub sample_rate_hz: f64,
+    /// Standard deviation of the quiet record, N.
+    pub noise_n: f64,
+    /// Cutoff of the zero-phase Butterworth low-pass, Hz; null: none applied.
+    pub cutoff_hz: Option<f64>,
+    /// Passes and order in words.
+    pub filter: String,
+    /// Zero before and after, N as the calibration reads it; null where there is no quiet record.
+    pub baseline_before_n: Option<f64>,
+    pub baseline_after_n: Option<f64>,
+}
+
+/// A reduced firing: what result.json holds.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Firing {
+    pub schema: String,
+    pub run: RunRecord,
+    pub quantities: Quantities,
+    pub burn: BurnTimes,
+    pub bursts: Vec<Burst>,
+    pub motor_class: Option<MotorClass>,
+    pub stand: Option<StandRecord>,
+    pub conditioning: Conditioning,
+    pub uncertainty_budget: BTreeMap<String, Vec<BudgetLine>>,
+    pub checks: Vec<Check>,
+    pub provenance: Provenance,
+}
+
+/// What is drawn and tabulated beside the figures. All vectors of one group have equal length; time is log time in s.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct Curves {
+    /// Calibrated, baseline-corrected samples, unfiltered.
+    pub time_s: Vec<f64>,
+    pub raw_n: Vec<f64>,
+    /// Conditioned thrust at the same instants.
+    pub conditioned_n: Vec<f64>,
+    /// Standard uncertainty of the conditioned thrust, N; `None` where the scale's error is not known.
+    pub conditioned_u_n: Option<Vec<f64>>,
+    /// Zero taken away, N as the calibration reads it.
+    pub baseline_n: Vec<f64>,
+    /// Thrust from first to last measurable thrust, exactly zero at both ends: straight lines between these points
+    /// carry the total impulse.
+    pub thrust_time_s: Vec<f64>,
+    pub thrust_n: Vec<f64>,
+    pub thrust_u_n: Option<Vec<f64>>,
+    /// 5 % of peak, N.
+    pub burn_threshold_n: f64,
+    pub peak_time_s: f64,
+    /// Absolute chamber pressure where there is a channel, Pa, at `time_s`.
+    pub pressure_pa: Option<Vec<f64>>,
+}
