@@ -7,4 +7,5 @@ pub mod conditioned;
 pub mod lowpass;
 pub mod peak;
 pub mod quiet;
+pub mod ringing;
 pub mod spectrum;

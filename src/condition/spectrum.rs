@@ -53,6 +53,22 @@ pub fn welch(data: &[f64], rate_hz: f64, segment: usize) -> Option<Spectrum> {
     Some(Spectrum { frequency_hz, density })
 }
 
+/// Frequency of the strongest line of `data` between two frequencies, Hz: Hann window, transform padded fourfold.
+pub fn strongest_line(data: &[f64], rate_hz: f64, low_hz: f64, high_hz: f64) -> Option<f64> {
+    let n = data.len();
+    let length = (4 * n).next_power_of_two();
+    let mut buffer = vec![Complex::new(0.0, 0.0); length];
+    for (i, (slot, x)) in buffer.iter_mut().zip(data).enumerate() {
+        slot.re = x * (0.5 - 0.5 * (2.0 * PI * i as f64 / n as f64).cos());
+    }
+    FftPlanner::new().plan_fft_forward(length).process(&mut buffer);
+    let hz = |k: usize| k as f64 * rate_hz / length as f64;
+    (1..length / 2)
+        .filter(|&k| hz(k) >= low_hz && hz(k) <= high_hz)
+        .max_by(|&a, &b| buffer[a].norm_sqr().total_cmp(&buffer[b].norm_sqr()))
+        .map(hz)
+}
+
 /// A segment length that the transform handles quickly and that leaves some `pieces` half-overlapping segments.
 pub fn segment_for(samples: usize, pieces: usize) -> usize {
     let wanted = (2 * samples / (pieces + 1)).clamp(8, 1 << 15);

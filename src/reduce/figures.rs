@@ -186,7 +186,7 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         crossings::first_up(&curve.time_s[from..], &curve.thrust_n[from..], RISEN_LEVEL * peak_n)
     };
     let rise_time = risen.filter(|r| r.time_s > action.start.time_s).map(|r| r.time_s - action.start.time_s);
-    let delay = ignition(record).map(|(at, u)| (action.start.time_s - at, u));
+    let delay = ignition(record).map(|(at, u)| (burn.start.time_s - at, u));
 
     let mass = propellant_mass(record, zero, &mut findings);
     let work = Work { record, zero, curve, bt, bf, burn: &burn, action: &action, total_impulse, burn_impulse, burn_time,
@@ -554,7 +554,7 @@ impl Work<'_> {
                 burn_impulse: -level_n * start_u,
                 action_time: -up_u,
                 rise_time: -up_u,
-                ignition_delay: up_u.hypot(delay_u.unwrap_or(0.0)),
+                ignition_delay: delay_u.map_or(0.0, |u| u.hypot(start_u)),
                 ..Effect::of(source)
             },
             Effect { burn_time: end_u, burn_impulse: level_n * end_u, action_time: down_u, ..Effect::of(source) },

@@ -45,7 +45,7 @@ pub fn channels(inputs: &Inputs) -> Result<Vec<Channel<'_>>, Problem> {
         })?;
         let (low, high) =
             column.values.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(*v), h.max(*v)));
-        calibration.check_monotonic([low, high]).map_err(|p| p.in_file(&inputs.run.log.file))?;
+        calibration.check_monotonic(low, high).map_err(|p| p.in_file(&inputs.run.log.file))?;
         let force_n = column.values.iter().map(|r| calibration.force_n(*r)).collect::<Result<Vec<f64>, Problem>>()?;
         out.push(Channel { column, calibration, force_n });
     }
