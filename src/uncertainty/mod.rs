@@ -1,1 +1,3 @@
+//! How far each figure may be off, and what it owes that to.
 
+pub mod statistics;
