@@ -121,7 +121,9 @@ fn uncertainty_si(text: &str, unit: Unit, whole: &str) -> Result<f64, Problem> {
             .remedy(format!("give it in {}", unit.symbol)));
     }
     if value < 0.0 {
-        return Err(Problem::new(format!("the uncertainty of \"{whole}\" is negative")).remedy("write it as a positive number"));
+        return Err(
+            Problem::new(format!("the uncertainty of \"{whole}\" is negative")).remedy("write it as a positive number")
+        );
     }
     Ok(value * own.factor)
 }

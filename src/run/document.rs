@@ -1,7 +1,7 @@
 //! A TOML file whose every value knows its line, so that a refusal can say where and what to write instead.
 
 use crate::problem::Problem;
-use crate::quantity::{self, Dimension, Measured};
+use crate::quantity::{self, Dimension, Measured, Unit};
 use std::io::Read;
 use std::ops::Range;
 use std::path::{Path, PathBuf};
@@ -140,12 +140,16 @@ impl<'a> Table<'a> {
             return Ok(());
         };
         let written = key.get_ref().as_ref();
-        let nearest = known.iter().map(|name| (strsim::jaro_winkler(&written.to_lowercase(), name), *name)).max_by(|a, b| a.0.total_cmp(&b.0));
+        let nearest = known
+            .iter()
+            .map(|name| (strsim::jaro_winkler(&written.to_lowercase(), name), *name))
+            .max_by(|a, b| a.0.total_cmp(&b.0));
         let what = match known {
             _ if self.name.is_empty() => "the top of the file".to_string(),
             _ => format!("[{}]", self.name),
         };
-        let problem = Problem::new(format!("key \"{written}\" is not known in {what}")).expected(format!("one of: {}", known.join(", ")));
+        let problem = Problem::new(format!("key \"{written}\" is not known in {what}"))
+            .expected(format!("one of: {}", known.join(", ")));
         let problem = match nearest {
             Some((score, name)) if score > 0.6 => problem.remedy(format!("did you mean \"{name}\"?")),
             _ => problem.remedy("remove the key, or move it to the table it belongs to"),
@@ -196,7 +200,9 @@ impl<'a> Table<'a> {
         let Some(value) = self.table.get(key) else { return Ok(None) };
         match value.get_ref() {
             DeValue::String(text) => Ok(Some(Found { value: text.to_string(), span: value.span() })),
-            other => Err(self.wrong_type(key, value, "a text in quotes", format!("write {key} = \"{}\"", plain(other)))),
+            other => {
+                Err(self.wrong_type(key, value, "a text in quotes", format!("write {key} = \"{}\"", plain(other))))
+            }
         }
     }
 
@@ -207,8 +213,11 @@ impl<'a> Table<'a> {
             return Ok(Some(*meaning));
         }
         let names: Vec<&str> = words.iter().map(|(word, _)| *word).collect();
-        let nearest = names.iter().max_by(|a, b| strsim::jaro_winkler(&found.value, a).total_cmp(&strsim::jaro_winkler(&found.value, b)));
-        let problem = Problem::new(format!("{} is \"{}\"", self.full(key), found.value)).expected(format!("one of: {}", names.join(", ")));
+        let nearest = names
+            .iter()
+            .max_by(|a, b| strsim::jaro_winkler(&found.value, a).total_cmp(&strsim::jaro_winkler(&found.value, b)));
+        let problem = Problem::new(format!("{} is \"{}\"", self.full(key), found.value))
+            .expected(format!("one of: {}", names.join(", ")));
         let problem = match nearest {
             Some(name) => problem.remedy(format!("write {key} = \"{name}\", if that is what it means")),
             None => problem,
@@ -229,7 +238,12 @@ impl<'a> Table<'a> {
         let Some(value) = self.table.get(key) else { return Ok(None) };
         match number_of(value.get_ref()) {
             Some(number) if number.is_finite() => Ok(Some(Found { value: number, span: value.span() })),
-            _ => Err(self.wrong_type(key, value, "a finite number without quotes", format!("write {key} = 1.0, with your number"))),
+            _ => Err(self.wrong_type(
+                key,
+                value,
+                "a finite number without quotes",
+                format!("write {key} = 1.0, with your number"),
+            )),
         }
     }
 
@@ -238,7 +252,12 @@ impl<'a> Table<'a> {
         let Some(value) = self.table.get(key) else { return Ok(None) };
         match whole_of(value.get_ref()) {
             Some(number) if number >= 1 => Ok(Some(Found { value: number, span: value.span() })),
-            _ => Err(self.wrong_type(key, value, "a whole number from 1 up", format!("write {key} = 1, with your number"))),
+            _ => Err(self.wrong_type(
+                key,
+                value,
+                "a whole number from 1 up",
+                format!("write {key} = 1, with your number"),
+            )),
         }
     }
 
@@ -274,6 +293,27 @@ impl<'a> Table<'a> {
         }
     }
 
+    /// A quantity of one of several dimensions, in SI, with the unit it was written in.
+    pub fn quantity_among(
+        &self,
+        key: &str,
+        dimensions: &[Dimension],
+    ) -> Result<Option<Found<(Measured, Unit)>>, Problem> {
+        let first = dimensions.first().copied().unwrap_or(Dimension::Ratio);
+        let unit = self.raw_text(key).and_then(|text| quantity::parse_any(text).ok()).map(|(_, unit)| unit);
+        let unit = match unit {
+            Some(unit) if dimensions.contains(&unit.dimension) => unit,
+            // lets the first dimension word the refusal
+            _ => {
+                return self
+                    .quantity(key, first)
+                    .map(|found| found.map(|found| Found { value: (found.value, one()), span: found.span }));
+            }
+        };
+        let found = self.quantity(key, unit.dimension)?;
+        Ok(found.map(|found| Found { value: (found.value, unit), span: found.span }))
+    }
+
     /// A quantity above zero.
     pub fn positive(&self, key: &str, dimension: Dimension) -> Result<Option<Measured>, Problem> {
         let Some(found) = self.quantity(key, dimension)? else { return Ok(None) };
@@ -298,10 +338,15 @@ impl<'a> Table<'a> {
             DeValue::Table(table) => {
                 Ok(Some(Table { document: self.document, name: self.full(key), table, span: value.span() }))
             }
-            DeValue::Array(_) => {
-                Err(self.wrong_type(key, value, "one table", format!("write [{}] with single brackets, once", self.full(key))))
+            DeValue::Array(_) => Err(self.wrong_type(
+                key,
+                value,
+                "one table",
+                format!("write [{}] with single brackets, once", self.full(key)),
+            )),
+            _ => {
+                Err(self.wrong_type(key, value, "a table", format!("write [{}] on a line of its own", self.full(key))))
             }
-            _ => Err(self.wrong_type(key, value, "a table", format!("write [{}] on a line of its own", self.full(key)))),
         }
     }
 
@@ -309,7 +354,12 @@ impl<'a> Table<'a> {
     pub fn tables(&self, key: &str) -> Result<Vec<Table<'a>>, Problem> {
         let Some(value) = self.table.get(key) else { return Ok(Vec::new()) };
         let wrong = |value: &Spanned<DeValue<'_>>| {
-            self.wrong_type(key, value, "a list of tables", format!("write [[{}]] with double brackets", self.full(key)))
+            self.wrong_type(
+                key,
+                value,
+                "a list of tables",
+                format!("write [[{}]] with double brackets", self.full(key)),
+            )
         };
         let DeValue::Array(list) = value.get_ref() else { return Err(wrong(value)) };
         list.iter()
@@ -326,9 +376,13 @@ impl<'a> Table<'a> {
     pub fn pairs(&self, key: &str) -> Result<Option<Vec<Found<[f64; 2]>>>, Problem> {
         let Some(value) = self.table.get(key) else { return Ok(None) };
         let wrong = |value: &Spanned<DeValue<'_>>| {
-            let problem = Problem::new(format!("{} holds {} where a pair should be", self.full(key), type_in_words(value.get_ref())))
-                .expected("pairs of finite numbers")
-                .remedy(format!("write {key} = [[0, 8123.4], [5, 52311.0]]"));
+            let problem = Problem::new(format!(
+                "{} holds {} where a pair should be",
+                self.full(key),
+                type_in_words(value.get_ref())
+            ))
+            .expected("pairs of finite numbers")
+            .remedy(format!("write {key} = [[0, 8123.4], [5, 52311.0]]"));
             self.document.place(problem, value.span().start)
         };
         let DeValue::Array(list) = value.get_ref() else { return Err(wrong(value)) };
@@ -385,6 +439,11 @@ impl<'a> Table<'a> {
         }
         Ok(map)
     }
+}
+
+/// A bare ratio's unit.
+fn one() -> Unit {
+    Unit { symbol: "1", dimension: Dimension::Ratio, factor: 1.0, offset: 0.0 }
 }
 
 fn recorded_text(text: &str) -> serde_json::Value {

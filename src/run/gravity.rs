@@ -72,12 +72,17 @@ pub fn gravity(site: &SiteSpec) -> Gravity {
         Some(_) => "GRS80 normal gravity at the latitude and height given".to_string(),
         None => "GRS80 normal gravity at the latitude given; no height given, taken as sea level ± 600 m".to_string(),
     };
-    Gravity { value_m_s2: value, standard_uncertainty: parts.iter().map(|part| part * part).sum::<f64>().sqrt(), source }
+    Gravity {
+        value_m_s2: value,
+        standard_uncertainty: parts.iter().map(|part| part * part).sum::<f64>().sqrt(),
+        source,
+    }
 }
 
 /// Half a unit of the last decimal written.
 fn rounding_limits(number: &str) -> f64 {
-    let decimals = number.split_once('.').map_or(0, |(_, decimals)| decimals.chars().take_while(char::is_ascii_digit).count());
+    let decimals =
+        number.split_once('.').map_or(0, |(_, decimals)| decimals.chars().take_while(char::is_ascii_digit).count());
     0.5 * 10f64.powi(-(decimals.min(9) as i32))
 }
 

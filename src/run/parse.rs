@@ -53,8 +53,7 @@ pub fn check_id(id: &str) -> Result<(), Problem> {
 fn run_spec(document: &Document) -> Result<RunSpec, Problem> {
     let parsed = document.parse()?;
     let root = parsed.root();
-    let known =
-        ["run", "log", "channel", "stand", "site", "motor", "conditions", "tags", "check_load", "reduction"];
+    let known = ["run", "log", "channel", "stand", "site", "motor", "conditions", "tags", "check_load", "reduction"];
     root.only(&known)?;
     let Some(run) = root.table("run")? else {
         return Err(root.missing("run", "a table [run] with the id of the firing", "write [run] and id = \"FM-07\""));
@@ -91,7 +90,11 @@ fn run_spec(document: &Document) -> Result<RunSpec, Problem> {
 fn log_spec(table: &Table<'_>) -> Result<LogSpec, Problem> {
     table.only(&["file", "time", "rate", "clock_tolerance", "averaging"])?;
     let Some(file) = table.text("file")?.filter(|file| !file.value.trim().is_empty()) else {
-        return Err(table.missing("file", "the name of the log, relative to run.toml", "write file = \"fm-07.csv\" under [log]"));
+        return Err(table.missing(
+            "file",
+            "the name of the log, relative to run.toml",
+            "write file = \"fm-07.csv\" under [log]",
+        ));
     };
     let time = match table.table("time")? {
         Some(time) => {
@@ -147,9 +150,12 @@ fn channels(root: &Table<'_>) -> Result<Vec<ChannelSpec>, Problem> {
         return Ok(channels);
     }
     let found = if channels.is_empty() { "there is no [[channel]]" } else { "no [[channel]] has role = \"force\"" };
-    Err(root.problem_with("channel", Problem::new(found)
-        .expected("at least one force channel")
-        .remedy("write [[channel]], role = \"force\", column = \"load\", unit = \"count\" and calibration = \"cell.toml\"")))
+    Err(root.problem_with(
+        "channel",
+        Problem::new(found).expected("at least one force channel").remedy(
+            "write [[channel]], role = \"force\", column = \"load\", unit = \"count\" and calibration = \"cell.toml\"",
+        ),
+    ))
 }
 
 fn channel(table: &Table<'_>) -> Result<ChannelSpec, Problem> {
@@ -159,7 +165,11 @@ fn channel(table: &Table<'_>) -> Result<ChannelSpec, Problem> {
         return Err(table.missing("role", "force, pressure or ignition", "write role = \"force\" in this [[channel]]"));
     };
     let Some(column) = table.column("column")? else {
-        return Err(table.missing("column", "a header name, or the number of the column", "write column = \"load\" in this [[channel]]"));
+        return Err(table.missing(
+            "column",
+            "a header name, or the number of the column",
+            "write column = \"load\" in this [[channel]]",
+        ));
     };
     let raw = [Dimension::Count, Dimension::Voltage, Dimension::VoltageRatio];
     let unit = match role {
@@ -267,7 +277,8 @@ fn check_load(table: &Table<'_>) -> Result<CheckLoadSpec, Problem> {
     let need = |key: &str, remedy: &str| table.missing(key, "mass, from and to of a weight on the stand", remedy);
     let mass_kg: Measured =
         table.positive("mass", Dimension::Mass)?.ok_or_else(|| need("mass", "write mass = \"10 kg\""))?;
-    let from = table.quantity("from", Dimension::Time)?.ok_or_else(|| need("from", "write from = \"12 s\", log time"))?;
+    let from =
+        table.quantity("from", Dimension::Time)?.ok_or_else(|| need("from", "write from = \"12 s\", log time"))?;
     let to = table.quantity("to", Dimension::Time)?.ok_or_else(|| need("to", "write to = \"18 s\", log time"))?;
     if to.value.value <= from.value.value {
         let problem = Problem::new("check_load.to is not after check_load.from")
@@ -304,7 +315,8 @@ mod tests {
     use std::path::PathBuf;
 
     const FULL: &str = include_str!("../../tests/reference/full-run.toml");
-    const SMALL: &str = "[run]\nid = \"A-1\"\n[log]\nfile = \"a.csv\"\n[[channel]]\nrole = \"force\"\ncolumn = 2\nunit = \"N\"\n";
+    const SMALL: &str =
+        "[run]\nid = \"A-1\"\n[log]\nfile = \"a.csv\"\n[[channel]]\nrole = \"force\"\ncolumn = 2\nunit = \"N\"\n";
 
     fn spec(text: &str) -> Result<RunSpec, Problem> {
         read_text(Path::new("bench/run.toml"), text)
@@ -347,7 +359,10 @@ mod tests {
         let run = spec(SMALL).unwrap();
         assert_eq!(run.site, SiteSpec::default());
         assert_eq!(run.channels.len(), 1);
-        assert_eq!(spec(&format!("{SMALL}[reduction]\nlowpass = \"off\"")).unwrap().reduction.lowpass, Some(Lowpass::Off));
+        assert_eq!(
+            spec(&format!("{SMALL}[reduction]\nlowpass = \"off\"")).unwrap().reduction.lowpass,
+            Some(Lowpass::Off)
+        );
     }
 
     /// Each refusal names the line of the trouble and what to write.
