@@ -1,4 +1,4 @@
 //! How far each figure may be off, and what it owes that to.
 
-pub mod statistics;
 pub mod effects;
+pub mod statistics;
