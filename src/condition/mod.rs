@@ -9,3 +9,5 @@ pub mod peak;
 pub mod quiet;
 pub mod ringing;
 pub mod spectrum;
+pub mod clipping;
+pub mod glitch;
