@@ -239,3 +239,12 @@ fn the_same_seed_gives_the_same_bytes_and_another_does_not() {
         assert!(a.truth.total_impulse_n_s.is_finite() && a.truth.burn_time_s > 0.0, "{kind:?}");
     }
 }
+
+#[test]
+fn the_scale_is_off_within_its_limits() {
+    for seed in 1..40 {
+        let scenario = random_scenario_kind(KINDS[0], seed);
+        let off = scenario.weighed_propellant_kg() - scenario.motor.propellant_mass_kg;
+        assert!(off.abs() <= scenario.propellant_limits_kg && off != 0.0, "{off}");
+    }
+}

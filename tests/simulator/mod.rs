@@ -11,11 +11,14 @@ pub mod cell;
 pub mod logger;
 pub mod motor;
 pub mod random;
+pub mod samples;
 pub mod stand;
 
 use cell::{Cell, Scale};
 use logger::{Extra, LogTruth, Logger, TimeStyle};
 use motor::Motor;
+use rand::{RngExt, SeedableRng};
+use rand_chacha::ChaCha8Rng;
 use stand::{CellForce, Stand};
 use std::fmt::Write as _;
 use std::path::{Path, PathBuf};
@@ -269,6 +272,14 @@ impl Scenario {
         Simulated { truth, files }
     }
 
+    /// What the scale said: off by a hidden part of its limits, in steps of a fifth of them.
+    pub fn weighed_propellant_kg(&self) -> f64 {
+        let mut rng = ChaCha8Rng::seed_from_u64(self.seed ^ 0x7363_616c_65);
+        let off_kg = self.propellant_limits_kg * rng.random_range(-0.9..0.9);
+        let step_kg = self.propellant_limits_kg / 5.0;
+        ((self.motor.propellant_mass_kg + off_kg) / step_kg).round() * step_kg
+    }
+
     fn run_toml(&self) -> String {
         let mut t = String::new();
         let w = &mut t;
@@ -337,7 +348,7 @@ impl Scenario {
         let limits = grams(self.propellant_limits_kg);
         let mut motor = Vec::new();
         if self.propellant_told {
-            let mass = grams(self.motor.propellant_mass_kg);
+            let mass = grams(self.weighed_propellant_kg());
             motor.push(format!("propellant_mass = \"{mass} ± {limits} g\""));
         }
         if let Some(extra) = self.expelled_extra_kg {

@@ -148,6 +148,8 @@ pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
         ..Logger::default()
     };
     let cut_at = (kind == Kind::Truncated).then(|| draw.range(0.03, 0.15));
+    // A scale with limits of 0.1 % of the mass, not finer than 0.1 g, in whole tenths of a gram.
+    let propellant_limits_kg = (motor.propellant_mass_kg * 10.0).ceil().max(1.0) * 1e-4;
     Scenario {
         id: format!("{kind:?}-{seed}"),
         seed,
@@ -158,6 +160,7 @@ pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
         before_s,
         after_s,
         cut_at,
+        propellant_limits_kg,
         ..Scenario::default()
     }
 }
