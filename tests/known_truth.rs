@@ -48,8 +48,12 @@ fn run(scenario: Scenario) -> Case {
     }
     let dir = tempfile::tempdir().expect("a temporary folder");
     let path = simulated.write_to(dir.path()).expect("the temporary folder can be written");
-    let reduction = load_run(&path).and_then(|inputs| reduce(&inputs)).map_err(|problem| problem.to_string());
-    Case { scenario, truth: simulated.truth, reduction }
+    Case { scenario, truth: simulated.truth, reduction: reduce_run(&path) }
+}
+
+fn reduce_run(path: &std::path::Path) -> Result<Reduction, String> {
+    let inputs = load_run(path).map_err(|problem| problem.to_string())?;
+    reduce(&inputs).map_err(|problem| problem.to_string())
 }
 
 /// Which figure, its truth and how far it may be off.
@@ -266,7 +270,7 @@ fn the_sample_runs_come_out_true() {
     let mut failures = Vec::new();
     for (id, truth) in &truths {
         let folder = truth["folder"].as_str().expect("a folder");
-        let reduction = match load_run(&root.join(folder).join("run.toml")).and_then(|inputs| reduce(&inputs)) {
+        let reduction = match reduce_run(&root.join(folder).join("run.toml")) {
             Ok(reduction) => reduction,
             Err(problem) => {
                 failures.push(format!("{id}: {problem}"));

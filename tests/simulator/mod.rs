@@ -13,6 +13,7 @@ pub mod motor;
 pub mod random;
 pub mod samples;
 pub mod stand;
+pub mod text;
 
 use cell::{Cell, Scale};
 use logger::{Extra, LogTruth, Logger, TimeStyle};
@@ -274,7 +275,7 @@ impl Scenario {
 
     /// What the scale said: off by a hidden part of its limits, in steps of a fifth of them.
     pub fn weighed_propellant_kg(&self) -> f64 {
-        let mut rng = ChaCha8Rng::seed_from_u64(self.seed ^ 0x7363_616c_65);
+        let mut rng = ChaCha8Rng::seed_from_u64(self.seed ^ 0x0073_6361_6c65);
         let off_kg = self.propellant_limits_kg * rng.random_range(-0.9..0.9);
         let step_kg = self.propellant_limits_kg / 5.0;
         ((self.motor.propellant_mass_kg + off_kg) / step_kg).round() * step_kg

@@ -356,7 +356,7 @@ impl Motor {
         if self.roughness <= 0.0 {
             return values.to_vec();
         }
-        let mut rng = ChaCha8Rng::seed_from_u64(seed ^ 0x726f_7567_68);
+        let mut rng = ChaCha8Rng::seed_from_u64(seed ^ 0x0072_6f75_6768);
         let omega = std::f64::consts::TAU * self.roughness_hz * STEP_S;
         // Pole radius for a bandwidth of half the middle frequency.
         let radius = (-0.25 * omega).exp();
