@@ -1,6 +1,7 @@
 //! What a run names, read into the inputs of its reduction: run.toml, calibration files, the log, and their hashes.
 
 use crate::calibration::{self, Calibration};
+use crate::condition::glitch;
 use crate::firing::InputFile;
 use crate::log::{self, Column, Log, ReadRequest};
 use crate::problem::Problem;
@@ -114,6 +115,7 @@ fn finish(mut run: RunSpec, mut log: Log, described_in: Vec<PathBuf>) -> Result<
         channel.unit = Some(calibration.reading_unit);
         calibrations.push(Some(calibration));
     }
+    repair(&run, &mut log);
     files.dedup();
     let mut inputs = Vec::with_capacity(files.len() + 1);
     for file in &files {
@@ -124,6 +126,15 @@ fn finish(mut run: RunSpec, mut log: Log, described_in: Vec<PathBuf>) -> Result<
     }
     inputs.push(InputFile { file: run.log.file.display().to_string(), sha256: log.sha256.clone() });
     Ok(Inputs { run, log, calibrations, files: inputs })
+}
+
+/// Repairs single-sample glitches in the channels that carry a force or a pressure.
+fn repair(run: &RunSpec, log: &mut Log) {
+    for channel in run.channels.iter().filter(|c| c.role != Role::Ignition) {
+        if let Some(index) = log.column_index(&channel.column) {
+            glitch::repair_channel(log, index);
+        }
+    }
 }
 
 /// The calibration of a force or pressure channel.
@@ -180,7 +191,7 @@ fn measures(calibration: Calibration, wanted: Dimension, unit: &Unit) -> Result<
 
 /// The unit the log itself gives a channel's column; `None` when it gives none and a calibration may say.
 fn unit_of_log(channel: &ChannelSpec, log: &mut Log) -> Result<Option<Unit>, Problem> {
-    let written = find_column(log, &channel.column).and_then(|column| column.unit.clone());
+    let written = log.column(&channel.column).and_then(|column| column.unit.clone());
     let Some(written) = written.filter(|text| !text.trim().is_empty()) else { return Ok(None) };
     match quantity::find(&written) {
         Some(unit) => {
@@ -191,13 +202,6 @@ fn unit_of_log(channel: &ChannelSpec, log: &mut Log) -> Result<Option<Unit>, Pro
         None => Err(quantity::unknown_unit(&written, None)
             .remedy("write the unit in the [[channel]], or give --unit: the log's own is not understood")),
     }
-}
-
-fn find_column<'a>(log: &'a Log, wanted: &ColumnRef) -> Option<&'a Column> {
-    log.columns.iter().find(|column| match wanted {
-        ColumnRef::Name(name) => column.name == *name,
-        ColumnRef::Number(number) => column.number == *number,
-    })
 }
 
 fn column_words(column: &ColumnRef) -> String {

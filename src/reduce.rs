@@ -13,8 +13,7 @@ use crate::condition::clipping;
 use crate::firing::{Burst, BurstKind, Conditioning, Curves, Firing, InputFile, Provenance, RunRecord, SCHEMA};
 use crate::log::Log;
 use crate::problem::Problem;
-use crate::run::gravity::{self, Gravity};
-use crate::run::{Orientation, RunSpec};
+use crate::run::{self, Gravity, Orientation, RunSpec};
 
 /// All that a reduction depends on, already read.
 #[derive(Debug, Clone)]
@@ -126,10 +125,11 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
     let run = &inputs.run;
     let log_file = &run.log.file;
     let mut findings = Vec::new();
-    let gravity = gravity::gravity(&run.site);
+    let gravity = run::gravity(&run.site);
     findings.push(format!("gravity {:.5} m/s²: {}", gravity.value_m_s2, gravity.source));
     let orientation = run.stand.orientation.unwrap_or_else(|| {
-        findings.push("no stand orientation given: taken as horizontal, so no weight of the motor in the reading".into());
+        findings
+            .push("no stand orientation given: taken as horizontal, so no weight of the motor in the reading".into());
         Orientation::Horizontal
     });
     let channels = force::channels(inputs)?;
@@ -164,8 +164,8 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
         },
     };
     let mut segmentation = events::find(&time_s, &force_n, inputs.log.interval_s, expectation);
-    let chosen = bursts::choose(&segmentation, &time_s, &run.check_loads, &run.reduction)
-        .map_err(|p| p.in_file(log_file))?;
+    let chosen =
+        bursts::choose(&segmentation, &time_s, &run.check_loads, &run.reduction).map_err(|p| p.in_file(log_file))?;
     let mut burn = segmentation.events[chosen];
     let sign = if burn.impulse < 0.0 { -1.0 } else { 1.0 };
     if sign < 0.0 {
@@ -179,7 +179,7 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
     widen_to_overrides(inputs, &time_s, &mut burn);
     let (mut clipped, mut clipped_at) = (Vec::new(), None);
     for channel in &channels {
-        if let Some(found) = clipping::find_clipping(&channel.column.values) {
+        for found in clipping::find_clipping(&channel.column.values) {
             clipped_at = Some(found.limit);
             clipped.extend(found.ranges);
         }

@@ -3,8 +3,8 @@
 mod simulator;
 
 use burntally::firing::{BurstKind, Firing, Status};
+use burntally::load::load_run;
 use burntally::reduce::reduce;
-use burntally::run::load::load_run;
 use simulator::Scenario;
 use simulator::Truth;
 use simulator::logger::{Encoding, Text, TimeStyle, UnitsRow};

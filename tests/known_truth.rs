@@ -6,8 +6,8 @@
 mod simulator;
 
 use burntally::firing::Figure;
+use burntally::load::load_run;
 use burntally::reduce::{Reduction, reduce};
-use burntally::run::load::load_run;
 use rayon::prelude::*;
 use simulator::random::{Kind, random_scenario_kind};
 use simulator::{Scenario, Truth};

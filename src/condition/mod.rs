@@ -3,11 +3,11 @@
 pub mod adaptive;
 pub mod averaging;
 pub mod baseline;
+pub mod clipping;
 pub mod conditioned;
+pub mod glitch;
 pub mod lowpass;
 pub mod peak;
 pub mod quiet;
 pub mod ringing;
 pub mod spectrum;
-pub mod clipping;
-pub mod glitch;

@@ -153,7 +153,8 @@ mod tests {
             .iter()
             .map(|&t| {
                 let z: f64 = StandardNormal.sample(&mut rng);
-                100.0 - 8.0 * t + 5.0 * t * t
+                100.0 - 8.0 * t
+                    + 5.0 * t * t
                     + amplitude * (-zeta * w * t).exp() * (w * (1.0 - zeta * zeta).sqrt() * t + 0.7).cos()
                     + noise * z
             })

@@ -99,6 +99,25 @@ pub struct Log {
     pub bytes: u64,
 }
 
+impl Log {
+    /// Index of the kept column that is named so, exactly or else but for case and spaces around it.
+    pub fn column_index(&self, wanted: &ColumnRef) -> Option<usize> {
+        match wanted {
+            ColumnRef::Number(number) => self.columns.iter().position(|c| c.number == *number),
+            ColumnRef::Name(name) => self
+                .columns
+                .iter()
+                .position(|c| c.name == *name)
+                .or_else(|| self.columns.iter().position(|c| c.name.trim().eq_ignore_ascii_case(name.trim()))),
+        }
+    }
+
+    /// The column itself.
+    pub fn column(&self, wanted: &ColumnRef) -> Option<&Column> {
+        self.column_index(wanted).and_then(|i| self.columns.get(i))
+    }
+}
+
 /// Reads a log from a stream in one pass after a look at its head; memory grows with the records kept, not with the text.
 ///
 /// # Errors

@@ -26,9 +26,12 @@ pub fn choose(
     let events = &segmentation.events;
     if let Some(number) = reduction.burst {
         if number == 0 || number > events.len() {
-            return Err(Problem::new(format!("[reduction] burst = {number}, but the log holds {} bursts", events.len()))
-                .expected(format!("a number from 1 to {}", events.len().max(1)))
-                .remedy("run `burntally inspect` on the log to see its bursts"));
+            return Err(Problem::new(format!(
+                "[reduction] burst = {number}, but the log holds {} bursts",
+                events.len()
+            ))
+            .expected(format!("a number from 1 to {}", events.len().max(1)))
+            .remedy("run `burntally inspect` on the log to see its bursts"));
         }
         return Ok(number - 1);
     }

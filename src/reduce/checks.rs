@@ -113,7 +113,10 @@ fn calibration(c: &mut Checks, record: &Record<'_>, figures: &Figures) {
         if let Some([_, top]) = ch.calibration.range_n {
             let highest = ch.force_n[record.burn.start..record.burn.end].iter().fold(0.0, |m: f64, f| m.max(f.abs()));
             if highest > 1.02 * top.abs() {
-                beyond.push(format!("{highest:.0} N read on {}, heaviest calibration load {top:.0} N", ch.calibration.name));
+                beyond.push(format!(
+                    "{highest:.0} N read on {}, heaviest calibration load {top:.0} N",
+                    ch.calibration.name
+                ));
             }
         }
     }
@@ -185,7 +188,11 @@ fn zeros(c: &mut Checks, record: &Record<'_>, zero: &Zero, figures: &Figures) {
     let noise = zero.baseline.shift_u_n().unwrap_or(f64::INFINITY);
     let what = if vertical { "beyond what the propellant's weight explains" } else { "between before and after" };
     if zero.baseline.shift_n().is_none() {
-        c.add("baseline_shift", Status::Caution, "the zero is known on one side of the burn only: its drift cannot be seen");
+        c.add(
+            "baseline_shift",
+            Status::Caution,
+            "the zero is known on one side of the burn only: its drift cannot be seen",
+        );
     } else if zero.wrong_way {
         c.add(
             "baseline_shift",
@@ -229,7 +236,10 @@ fn sampling(c: &mut Checks, record: &Record<'_>, figures: &Figures) {
     } else {
         let clock = match &record.inputs.run.log.clock_tolerance {
             Some(t) => format!("clock within ± {}", percent(t.value)),
-            None => format!("clock taken as a crystal, within ± {} (from memory; state `clock_tolerance`)", percent(CRYSTAL_CLOCK)),
+            None => format!(
+                "clock taken as a crystal, within ± {} (from memory; state `clock_tolerance`)",
+                percent(CRYSTAL_CLOCK)
+            ),
         };
         c.add("sampling", Status::Pass, format!("{samples:.0} samples over the burn ({rate:.1} Hz); {clock}"));
     }
@@ -355,7 +365,11 @@ fn check_loads(c: &mut Checks, record: &Record<'_>, figures: &Figures) {
         let off = [mean(load.from_s - span, load.from_s - 0.3), mean(load.to_s + 0.3, load.to_s + span)];
         let rest: Vec<f64> = off.into_iter().flatten().collect();
         let (Some(on), false) = (on, rest.is_empty()) else {
-            c.add("check_load", Status::Fail, format!("no record between {} s and {} s to check the weight in", load.from_s, load.to_s));
+            c.add(
+                "check_load",
+                Status::Fail,
+                format!("no record between {} s and {} s to check the weight in", load.from_s, load.to_s),
+            );
             continue;
         };
         let read = (on - rest.iter().sum::<f64>() / rest.len() as f64).abs();
@@ -372,7 +386,10 @@ fn check_loads(c: &mut Checks, record: &Record<'_>, figures: &Figures) {
         c.add(
             "check_load",
             status,
-            format!("{:.4} kg on the stand pushes with {expected:.2} N; read {read:.2} N, ratio {ratio:.4}", load.mass_kg.value),
+            format!(
+                "{:.4} kg on the stand pushes with {expected:.2} N; read {read:.2} N, ratio {ratio:.4}",
+                load.mass_kg.value
+            ),
         );
     }
 }

@@ -152,8 +152,7 @@ pub fn for_display(record: &Record<'_>, zero: &Zero, curve: &Curve, figures: &Fi
     let uncertainty = |t: f64, f: f64| figures.thrust_u_n(t, f);
     let known = figures.scale_known;
     Curves {
-        conditioned_u_n: known
-            .then(|| time_s.iter().zip(&conditioned_n).map(|(t, f)| uncertainty(*t, *f)).collect()),
+        conditioned_u_n: known.then(|| time_s.iter().zip(&conditioned_n).map(|(t, f)| uncertainty(*t, *f)).collect()),
         thrust_u_n: known.then(|| thrust_time_s.iter().zip(&thrust_n).map(|(t, f)| uncertainty(*t, *f)).collect()),
         raw_n: zero.thrust_n.clone(),
         conditioned_n,

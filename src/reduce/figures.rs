@@ -189,16 +189,31 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
     let delay = ignition(record).map(|(at, u)| (burn.start.time_s - at, u));
 
     let mass = propellant_mass(record, zero, &mut findings);
-    let work = Work { record, zero, curve, bt, bf, burn: &burn, action: &action, total_impulse, burn_impulse, burn_time,
-        action_time, initial, initial_s, rise_time, delay: delay.map(|d| d.0) };
+    let work = Work {
+        record,
+        zero,
+        curve,
+        bt,
+        bf,
+        burn: &burn,
+        action: &action,
+        total_impulse,
+        burn_impulse,
+        burn_time,
+        action_time,
+        initial,
+        initial_s,
+        rise_time,
+        delay: delay.map(|d| d.0),
+    };
     let (mut effects, scale_known) = work.effects(delay.map(|d| d.1), mass.as_ref().map(|m| m.1));
     effects.retain(|e| *e != Effect::of(e.source.clone()));
-    let relative_u = Propagated::collect(
-        &effects.iter().filter(|e| is_scale(&e.source)).cloned().collect::<Vec<_>>(),
-        |e| e.peak_thrust,
-    )
-    .standard_uncertainty()
-        / peak_n;
+    let relative_u =
+        Propagated::collect(&effects.iter().filter(|e| is_scale(&e.source)).cloned().collect::<Vec<_>>(), |e| {
+            e.peak_thrust
+        })
+        .standard_uncertainty()
+            / peak_n;
 
     let mut b = Budgets::default();
     let mut fig = |name: &str, value: f64, unit: &str, of: &dyn Fn(&Effect) -> f64, known: bool| -> Figure {
@@ -242,19 +257,26 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
             &|e| ve / STANDARD_GRAVITY_M_S2 * relative(e),
             known,
         ));
-        q.effective_exhaust_velocity =
-            Some(fig("effective_exhaust_velocity", ve, "m/s", &|e| ve * relative(e), known));
+        q.effective_exhaust_velocity = Some(fig("effective_exhaust_velocity", ve, "m/s", &|e| ve * relative(e), known));
         q.propellant_mass = Some(figure);
     }
     if let (Some(before), Some(after)) = (run.motor.mass_before_kg, run.motor.mass_after_kg) {
         let u = before.standard_uncertainty.zip(after.standard_uncertainty).map(|(a, b)| a.hypot(b));
         let propagated = Propagated { lines: u.map(|u| ("weighing".to_string(), u)).into_iter().collect() };
-        q.expelled_mass =
-            Some(b.figure("expelled_mass", before.value - after.value, "kg", &propagated, u.is_some()));
+        q.expelled_mass = Some(b.figure("expelled_mass", before.value - after.value, "kg", &propagated, u.is_some()));
     }
     if !clipped_in_burn(record).is_empty() {
-        for figure in [&mut q.total_impulse, &mut q.burn_impulse, &mut q.average_thrust, &mut q.peak_thrust,
-            &mut q.specific_impulse, &mut q.effective_exhaust_velocity].into_iter().flatten() {
+        for figure in [
+            &mut q.total_impulse,
+            &mut q.burn_impulse,
+            &mut q.average_thrust,
+            &mut q.peak_thrust,
+            &mut q.specific_impulse,
+            &mut q.effective_exhaust_velocity,
+        ]
+        .into_iter()
+        .flatten()
+        {
             figure.bound = Some("lower".to_string());
         }
     }
@@ -289,8 +311,15 @@ pub fn clipped_in_burn(record: &Record<'_>) -> Vec<std::ops::Range<usize>> {
     record.clipped.iter().filter(|r| r.start < record.burn.end && r.end > record.burn.start).cloned().collect()
 }
 
-const SCALE_SOURCES: [&str; 7] =
-    ["calibration fit", "weights", "gravity", "air buoyancy", "beyond the heaviest weight", "stated accuracy", "force ratio"];
+const SCALE_SOURCES: [&str; 7] = [
+    "calibration fit",
+    "weights",
+    "gravity",
+    "air buoyancy",
+    "beyond the heaviest weight",
+    "stated accuracy",
+    "force ratio",
+];
 
 fn is_scale(source: &str) -> bool {
     SCALE_SOURCES.contains(&source)
@@ -393,7 +422,8 @@ impl Work<'_> {
                 let mass_share = match (&self.zero.shift_mass_kg, record.inputs.run.motor.propellant_mass_kg) {
                     (Some((kg, _)), None) => {
                         let span = force[peak_index] - rest;
-                        let relative = if span != 0.0 { change[peak_index] * record.force_ratio / span.abs() } else { 0.0 };
+                        let relative =
+                            if span != 0.0 { change[peak_index] * record.force_ratio / span.abs() } else { 0.0 };
                         kg * relative
                     }
                     _ => 0.0,
@@ -440,7 +470,8 @@ impl Work<'_> {
     fn rest_of(&self, channel: &force::Channel<'_>) -> f64 {
         let end = self.zero.burst.start;
         let start = end.saturating_sub(200).max(self.zero.window.start.min(end));
-        let quiet = if end > start { &channel.force_n[start..end] } else { &channel.force_n[self.zero.burst.end - 1..] };
+        let quiet =
+            if end > start { &channel.force_n[start..end] } else { &channel.force_n[self.zero.burst.end - 1..] };
         if quiet.is_empty() { 0.0 } else { quiet.iter().sum::<f64>() / quiet.len() as f64 }
     }
 
@@ -500,11 +531,7 @@ impl Work<'_> {
                 ..Effect::of("noise")
             },
             Effect { peak_thrust: self.curve.peak.noise_u_n, ..Effect::of("noise at the peak") },
-            Effect {
-                total_impulse: self.sampling_u(),
-                burn_impulse: self.sampling_u(),
-                ..Effect::of("sampling")
-            },
+            Effect { total_impulse: self.sampling_u(), burn_impulse: self.sampling_u(), ..Effect::of("sampling") },
         ]
     }
 

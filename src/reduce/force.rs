@@ -15,16 +15,7 @@ pub struct Channel<'a> {
 
 /// The column a channel names.
 pub fn column<'a>(inputs: &'a Inputs, reference: &ColumnRef) -> Result<&'a Column, Problem> {
-    let found = match reference {
-        ColumnRef::Number(n) => inputs.log.columns.iter().find(|c| c.number == *n),
-        ColumnRef::Name(name) => inputs
-            .log
-            .columns
-            .iter()
-            .find(|c| c.name == *name)
-            .or_else(|| inputs.log.columns.iter().find(|c| c.name.trim().eq_ignore_ascii_case(name.trim()))),
-    };
-    found.ok_or_else(|| {
+    inputs.log.column(reference).ok_or_else(|| {
         Problem::new(format!("the log has no column {reference:?}"))
             .expected(format!("one of: {}", inputs.log.available.join(", ")))
             .in_file(&inputs.run.log.file)

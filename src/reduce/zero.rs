@@ -82,7 +82,8 @@ pub fn correct(record: &Record<'_>) -> Zero {
     let pad = ((0.4 * burst_s).max(0.5) / record.interval_s()).ceil() as usize;
     let lower = before.as_ref().map_or(burn.start, |r| r.start);
     let upper = after.as_ref().map_or(burst.end, |r| r.end);
-    let window = burst.start.saturating_sub(pad).max(lower.min(burst.start))..(burst.end + pad).min(upper.max(burst.end));
+    let window =
+        burst.start.saturating_sub(pad).max(lower.min(burst.start))..(burst.end + pad).min(upper.max(burst.end));
     let thrust_n = subtract(record, &baseline, &window, &burst);
     Zero { baseline, burst, thrust_n, window, shift_mass_kg, wrong_way, drift_n, drift_u_n }
 }
@@ -147,19 +148,14 @@ fn quiet_after(record: &Record<'_>, burn: &Event, keep_s: f64, burst_s: f64) -> 
 /// The noise of single samples in the quiet record, N.
 pub fn sample_noise(zero: &Zero) -> f64 {
     let pool = [zero.baseline.before, zero.baseline.after];
-    let (sum, weight) = pool
-        .iter()
-        .flatten()
-        .fold((0.0, 0.0), |(s, w): (f64, f64), q: &QuietFit| (s + q.sample_sd.powi(2) * q.samples as f64, w + q.samples as f64));
+    let (sum, weight) = pool.iter().flatten().fold((0.0, 0.0), |(s, w): (f64, f64), q: &QuietFit| {
+        (s + q.sample_sd.powi(2) * q.samples as f64, w + q.samples as f64)
+    });
     if weight > 0.0 { (sum / weight).sqrt() } else { 0.0 }
 }
 
 /// Two-sided low-frequency density of the quiet noise, N² s.
 pub fn noise_density(zero: &Zero, interval_s: f64) -> f64 {
     let quiet = [zero.baseline.before, zero.baseline.after];
-    quiet
-        .iter()
-        .flatten()
-        .map(|q| q.low_frequency_density)
-        .fold(sample_noise(zero).powi(2) * interval_s, f64::max)
+    quiet.iter().flatten().map(|q| q.low_frequency_density).fold(sample_noise(zero).powi(2) * interval_s, f64::max)
 }
