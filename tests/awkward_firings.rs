@@ -7,9 +7,10 @@ use burntally::load::load_run;
 use burntally::reduce::reduce;
 use simulator::Scenario;
 use simulator::Truth;
-use simulator::logger::{Encoding, Text, TimeStyle, UnitsRow};
+use simulator::logger::TimeStyle;
 use simulator::motor::{Chuff, Hump, RiseKind, RoughStart, TailKind};
 use simulator::stand::{Hit, Orientation};
+use simulator::text::{Encoding, Text, UnitsRow};
 
 /// 1 kHz, neutral, 500 N for 2 s, noise 0.2 % of peak, with one thing changed.
 fn reduced(change: impl FnOnce(&mut Scenario)) -> (Firing, Truth) {

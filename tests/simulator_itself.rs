@@ -4,10 +4,11 @@ mod simulator;
 
 use simulator::Scenario;
 use simulator::cell::{Cell, WeightErrors};
-use simulator::logger::{Encoding, Logger, Text, TimeStyle};
+use simulator::logger::{Logger, TimeStyle};
 use simulator::motor::{Body, Dense, Motor, RiseKind, TailKind};
 use simulator::random::{KINDS, random_scenario_kind};
 use simulator::stand::{CellForce, Orientation, Stand, second_order};
+use simulator::text::{Encoding, Text};
 
 /// Rises in 0.1 s, level until 0.9 s, falls until 1.0 s: impulse 0.9 peak, 5 % crossings at 0.005 and 0.995 s.
 fn trapezoid() -> Motor {

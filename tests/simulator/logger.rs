@@ -1,8 +1,7 @@
 //! The logger: samples what the cell says, stamps it, and writes it down more or less well.
 
 use super::cell::Cell;
-pub use super::text::{Encoding, Text, UnitsRow};
-use super::text::{Lines, clock, encode};
+use super::text::{Lines, Text, UnitsRow, clock, encode};
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 use rand_distr::StandardNormal;

@@ -5,9 +5,10 @@
 
 use super::Scenario;
 use super::cell::Cell;
-use super::logger::{Logger, Text, TimeStyle};
+use super::logger::{Logger, TimeStyle};
 use super::motor::{Body, Chuff, Hump, Motor, RiseKind, RoughStart, TailKind};
 use super::stand::{Hit, Orientation, Stand};
+use super::text::Text;
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 

@@ -1,9 +1,10 @@
 //! The invented firings of `sample-runs/`: twelve motors of four pours of two propellants, on three stands.
 
 use super::cell::{Cell, Scale, WeightErrors};
-use super::logger::{Logger, Text, TimeStyle};
+use super::logger::{Logger, TimeStyle};
 use super::motor::{Body, Chuff, Hump, Motor, RiseKind, TailKind};
 use super::stand::{Hit, Orientation, Stand};
+use super::text::Text;
 use super::{CheckLoad, PressureChannel, Scenario};
 
 const INVENTED: &str = "Invented firing: people, places, stand, motor and every number come from a simulator.";
@@ -236,7 +237,7 @@ pub fn firings() -> Vec<Scenario> {
         accuracy: "0.5 %",
         web_thickness_m: Some(0.0095),
     });
-    bw2_1.logger.text.units_row = super::logger::UnitsRow::AfterHeader;
+    bw2_1.logger.text.units_row = super::text::UnitsRow::AfterHeader;
 
     let mut bw2_2 = on_trough("BW2-2", "BW2", "2026-06-06", 105, white(1.015, 0.990));
     // The amplifier was left at a gain that ends near 830 N.
