@@ -28,6 +28,10 @@ pub struct Reconstructed {
     pub fall: Option<Edge>,
 }
 
+/// A rise is over when it has reached this share of the highest mean, and goes on by no more than this share a cell.
+const LEAST_TOP: f64 = 0.4;
+const MOST_SLOPE: f64 = 0.25;
+
 fn parabolas(means: &[f64]) -> Vec<[f64; 2]> {
     let n = means.len();
     let at = |i: isize| means[i.clamp(0, n as isize - 1) as usize];
@@ -76,14 +80,15 @@ fn ramp_value(foot: f64, top: f64, x: f64, line: &impl Fn(f64) -> f64) -> f64 {
 }
 
 /// Finds a rise that starts in `cell` and is over within two cells, from the means; `tolerance` is what noise may make.
-fn rise(means: &[f64], cell: usize, tolerance: f64) -> Option<Edge> {
+fn rise(means: &[f64], cell: usize, tolerance: f64, highest: f64) -> Option<Edge> {
     let (a, b, c) = (*means.get(cell)?, *means.get(cell + 1)?, *means.get(cell + 2)?);
     let d = means.get(cell + 3).copied().unwrap_or(c);
-    if c <= 0.0 || b < 0.5 * c {
+    // A slow rise goes on beyond two cells, or has hardly begun by then: the parabolas follow it.
+    if c < LEAST_TOP * highest || b < 0.5 * c || (d - c).abs() > MOST_SLOPE * c {
         return None;
     }
-    // Top line through the two cells after the rise, x in cells from the start of `cell`; a fall beyond them is not followed.
-    let slope = if (d - c).abs() < 0.25 * c { d - c } else { 0.0 };
+    // Top line through the two cells after the rise, x in cells from the start of `cell`.
+    let slope = d - c;
     let line = |x: f64| c + slope * (x - 2.5);
     let missing = line(0.5) + line(1.5) - a - b;
     let middle = missing / line(0.7).max(1e-9 * c);
@@ -131,8 +136,8 @@ pub fn reconstruct(means: &[f64], noise: f64) -> Reconstructed {
         let strong = m.iter().position(|v| *v > 0.3 * highest)?;
         Some(m[..strong].iter().rposition(|v| *v <= foot).map_or(0, |i| i + 1))
     };
-    let rising = first_cell(means).and_then(|c| rise(means, c, 2.0 * noise));
-    let falling = first_cell(&reversed).and_then(|c| rise(&reversed, c, 2.0 * noise)).map(|e| Edge {
+    let rising = first_cell(means).and_then(|c| rise(means, c, 2.0 * noise, highest));
+    let falling = first_cell(&reversed).and_then(|c| rise(&reversed, c, 2.0 * noise, highest)).map(|e| Edge {
         foot: n as f64 - e.foot,
         top: n as f64 - e.top,
         foot_half_width: e.foot_half_width,
@@ -154,7 +159,7 @@ impl Reconstructed {
         let cell = foot.floor();
         let (Some(c), d) = (mean_at(cell + 2.0), mean_at(cell + 3.0)) else { return };
         let d = d.unwrap_or(c);
-        let slope = if (d - c).abs() < 0.25 * c { d - c } else { 0.0 };
+        let slope = d - c;
         let line = |x: f64| c + slope * (x - cell - 2.5);
         for (p, v) in self.position.iter().zip(self.value.iter_mut()) {
             let x = flip(*p);

@@ -199,7 +199,9 @@ impl Conditioned {
         let fitted = peak::fit(self.samples_n.get(range.clone())?, at - range.start, self.sample_noise_n[at])?;
         // What the choice of the stretch adds is of the order of the fit's own error.
         let noise_u_n = fitted.standard_error * 2f64.sqrt();
-        Some(Peak { thrust_n: fitted.value, noise_u_n, ..plain })
+        let hidden = peak::between_samples(&self.samples_n, at, self.sample_noise_n[at]);
+        let (excess, excess_u) = hidden.unwrap_or((0.0, 0.0));
+        Some(Peak { thrust_n: fitted.value + excess, noise_u_n: noise_u_n.hypot(excess_u), ..plain })
     }
 
     /// Makes the curve agree with its corrected peak: noise that stands above the peak is cut to it, and the highest

@@ -26,6 +26,9 @@ const PART_LIMIT: f64 = 2.5;
 /// Or when the next power of time, fitted too, would differ from nil by more than this many standard errors.
 const NEXT_POWER_LIMIT: f64 = 1.6;
 
+/// Fits whose standard error is within this factor of the smallest count alike.
+const NEARLY_AS_WELL: f64 = 1.5;
+
 /// Running sums from the top outwards: Σ y, Σ x y, Σ x² y, Σ x³ y, Σ y², x counted from the top.
 struct Sums(Vec<[f64; 5]>);
 
@@ -93,7 +96,7 @@ pub fn fit(data: &[f64], top: usize, sigma: f64) -> Option<PeakFit> {
         Sums::new(data[top + 1..].iter().take(LONGEST).enumerate().map(|(k, y)| ((k + 1) as f64, y - origin)));
     let left_sums =
         Sums::new(data[..top].iter().rev().take(LONGEST).enumerate().map(|(k, y)| (-((k + 1) as f64), y - origin)));
-    let mut best = plain;
+    let mut candidates = vec![plain];
     let right_lengths = lengths(right_sums.0.len() - 1);
     for left in lengths(left_sums.0.len() - 1) {
         let mut failures = 0;
@@ -109,13 +112,11 @@ pub fn fit(data: &[f64], top: usize, sigma: f64) -> Option<PeakFit> {
                 }
                 if let Some(candidate) = piece(&left_sums, &right_sums, left, right, order, sigma) {
                     accepted = true;
-                    if candidate.standard_error < best.standard_error {
-                        best = PeakFit {
-                            position: top as f64 + candidate.position,
-                            value: origin + candidate.value,
-                            ..candidate
-                        };
-                    }
+                    candidates.push(PeakFit {
+                        position: top as f64 + candidate.position,
+                        value: origin + candidate.value,
+                        ..candidate
+                    });
                     // A simpler piece that explains the stretch is preferred to a more flexible one.
                     break;
                 }
@@ -127,7 +128,32 @@ pub fn fit(data: &[f64], top: usize, sigma: f64) -> Option<PeakFit> {
             }
         }
     }
-    Some(best)
+    // One stretch among several that do nearly as well may owe its place to chance: the middle one is taken.
+    let best = candidates.iter().map(|c| c.standard_error).fold(f64::INFINITY, f64::min);
+    candidates.retain(|c| c.standard_error <= NEARLY_AS_WELL * best);
+    candidates.sort_unstable_by(|a, b| a.value.total_cmp(&b.value));
+    candidates.get(candidates.len() / 2).copied()
+}
+
+/// What a peak between two samples may add to the highest sample `top`, and the standard uncertainty of that.
+///
+/// Where a steep line leads up to the gap beside the highest sample and a flatter one down from it, the two carried on cross
+/// above both samples. A sharp peak reaches that crossing and a rounded one stays below: half of the way is taken.
+pub fn between_samples(data: &[f64], top: usize, sigma: f64) -> Option<(f64, f64)> {
+    let at = |k: isize| data.get(usize::try_from(top as isize + k).ok()?).copied();
+    // The gap before (from -1 to 0) and the gap after (from 0 to 1) the highest sample.
+    let crossing = |first: isize| -> Option<f64> {
+        let (a0, a1, b0, b1) = (at(first - 1)?, at(first)?, at(first + 1)?, at(first + 2)?);
+        let (up, down) = (a1 - a0, b0 - b1);
+        let (steep, flat) = (up.max(down), up.min(down));
+        if flat < 2.0 * sigma || steep < 3.0 * flat {
+            return None;
+        }
+        let x = (b0 + down - a1) / (up + down);
+        (0.0..=1.0).contains(&x).then(|| a1 + up * x - at(0).unwrap_or(f64::INFINITY))
+    };
+    let excess = crossing(-1).into_iter().chain(crossing(0)).fold(0.0, f64::max);
+    (excess > 0.0).then_some((excess / 2.0, excess / 12f64.sqrt()))
 }
 
 fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, sigma: f64) -> Option<PeakFit> {
@@ -238,6 +264,17 @@ mod tests {
                 "top {top} sigma {sigma}: mean {mean} worst {worst}"
             );
         }
+    }
+
+    #[test]
+    fn a_peak_between_samples() {
+        // A ramp of 50 a sample, reached at 70, meets a fall of 5 a sample from 100 at 70 + 50 x = 105 - 5 x, x = 35/55.
+        let (excess, u) = between_samples(&[0.0, 20.0, 70.0, 100.0, 95.0, 90.0], 3, 0.1).expect("excess");
+        let crossing = 70.0 + 50.0 * 35.0 / 55.0 - 100.0;
+        assert!((excess - crossing / 2.0).abs() < 1e-9 && (u - crossing / 12f64.sqrt()).abs() < 1e-9);
+        // A hump is no sharp peak, and noise is no slope.
+        assert_eq!(between_samples(&[80.0, 90.0, 97.0, 100.0, 97.0, 90.0, 80.0], 3, 0.1), None);
+        assert_eq!(between_samples(&[0.0, 20.0, 70.0, 100.0, 99.9, 99.8], 3, 0.1), None);
     }
 
     #[test]

@@ -1,5 +1,6 @@
 //! The quiet record: its level, its slope and its noise.
 
+use nalgebra::{Matrix3, Vector3};
 use std::ops::Range;
 
 /// Noise of a quiet stretch.
@@ -28,11 +29,19 @@ impl QuietFit {
     }
 }
 
-/// How many standard errors a slope must reach before it is used.
-const SLOPE_EVIDENCE: f64 = 5.0;
+/// How many standard errors a slope must reach before it is used up to the edge of its own stretch. Low, since a slope left
+/// out shifts the level, while one that is used for nothing only widens it.
+pub const SLOPE_EVIDENCE: f64 = 2.0;
+/// The same where the slope is to be carried far beyond its stretch.
+pub const SLOPE_EVIDENCE_BEYOND: f64 = 6.0;
 
 /// Fits the quiet samples `range` and gives the level at `at_s`. `None` for fewer than 2 samples.
 pub fn fit(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64) -> Option<QuietFit> {
+    fit_with(time_s, data, range, at_s, SLOPE_EVIDENCE)
+}
+
+/// As [`fit`], a slope being used from `evidence` standard errors on.
+pub fn fit_with(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64, evidence: f64) -> Option<QuietFit> {
     let (t, y) = (time_s.get(range.clone())?, data.get(range)?);
     let n = t.len();
     if n < 2 {
@@ -62,11 +71,11 @@ pub fn fit(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64) -> Opti
         (variance * length as f64 / (sd * sd)).max(1.0)
     };
     let slope_error = sd_line * (inflation(slope, sd_line) / spread).sqrt();
-    let use_slope = n >= 20 && slope.abs() > SLOPE_EVIDENCE * slope_error && slope_error > 0.0;
-    let (used, used_u, sd) =
-        if use_slope { (slope, slope_error, sd_line) } else { (0.0, 0.0, sd_about(0.0, nf - 1.0)) };
+    let use_slope = n >= 20 && slope.abs() > evidence * slope_error && slope_error > 0.0;
+    let (used, sd) = if use_slope { (slope, sd_line) } else { (0.0, sd_about(0.0, nf - 1.0)) };
     let factor = inflation(used, sd);
-    let level_u = (sd * sd * factor / nf + (used_u * (at_s - centre)).powi(2)).sqrt();
+    // A slope too small to be seen may still be there, so its error counts whether it is used or not.
+    let level_u = (sd * sd * factor / nf + (slope_error * (at_s - centre)).powi(2)).sqrt();
     Some(QuietFit {
         at_s,
         level: mean + used * (at_s - centre),
@@ -78,6 +87,87 @@ pub fn fit(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64) -> Opti
         samples: n,
         duration_s,
     })
+}
+
+/// Largest ratio of the variance that one line leaves beyond two to the variance within, at which one line is kept.
+const ONE_LINE_LIMIT: f64 = 4.0;
+
+/// Fits one line to two quiet stretches, the later one shifted by `step` or, where that is `None`, by a step found with it.
+/// Gives the zero at `at_s[0]` (before) and `at_s[1]` (after), or `None` where two separate lines explain the stretches
+/// plainly better: then the zero did not run steadily.
+pub fn fit_together(
+    time_s: &[f64],
+    data: &[f64],
+    ranges: [Range<usize>; 2],
+    at_s: [f64; 2],
+    step: Option<f64>,
+) -> Option<[QuietFit; 2]> {
+    let apart = [fit(time_s, data, ranges[0].clone(), at_s[0])?, fit(time_s, data, ranges[1].clone(), at_s[1])?];
+    let sums = |range: &Range<usize>, shift: f64| -> [f64; 6] {
+        let mut s = [0.0; 6];
+        for (t, y) in time_s[range.clone()].iter().zip(&data[range.clone()]) {
+            let (x, y) = (t - at_s[0], y - shift);
+            s[0] += 1.0;
+            s[1] += x;
+            s[2] += x * x;
+            s[3] += y;
+            s[4] += x * y;
+            s[5] += y * y;
+        }
+        s
+    };
+    let (a, b) = (sums(&ranges[0], 0.0), sums(&ranges[1], step.unwrap_or(0.0)));
+    // Level, slope and, where it is free, step.
+    let free = step.is_none();
+    let normal = Matrix3::new(
+        a[0] + b[0],
+        a[1] + b[1],
+        if free { b[0] } else { 0.0 },
+        a[1] + b[1],
+        a[2] + b[2],
+        if free { b[1] } else { 0.0 },
+        if free { b[0] } else { 0.0 },
+        if free { b[1] } else { 0.0 },
+        if free { b[0] } else { 1.0 },
+    );
+    let rhs = Vector3::new(a[3] + b[3], a[4] + b[4], if free { b[3] } else { 0.0 });
+    let inverse = normal.try_inverse()?;
+    let c = inverse * rhs;
+    let together = (a[5] + b[5] - c.dot(&rhs)).max(0.0);
+    // Two lines of their own, whatever slope is in each.
+    let own = |s: &[f64; 6]| {
+        let (sxx, sxy, syy) = (s[2] - s[1] * s[1] / s[0], s[4] - s[1] * s[3] / s[0], s[5] - s[3] * s[3] / s[0]);
+        if sxx > 0.0 { (syy - sxy * sxy / sxx).max(0.0) } else { syy.max(0.0) }
+    };
+    let n = a[0] + b[0];
+    let within = (own(&a) + own(&b)) / (n - 4.0).max(1.0);
+    // Correlated noise is not that many independent samples.
+    let inflation = apart
+        .iter()
+        .map(|q| {
+            q.low_frequency_density * q.samples as f64 / (q.sample_sd.powi(2) * q.duration_s).max(f64::MIN_POSITIVE)
+        })
+        .fold(1.0, f64::max);
+    let terms = if free { 1.0 } else { 2.0 };
+    let excess = (together - own(&a) - own(&b)) / terms;
+    if n < 12.0 || excess > ONE_LINE_LIMIT * within * inflation {
+        return None;
+    }
+    let covariance = inverse * (within * inflation);
+    let at = |k: usize| {
+        let x = at_s[k] - at_s[0];
+        let g = Vector3::new(1.0, x, if k == 1 && free { 1.0 } else { 0.0 });
+        let shift = if k == 1 { step.unwrap_or(c[2]) } else { 0.0 };
+        QuietFit {
+            at_s: at_s[k],
+            level: c[0] + c[1] * x + shift,
+            slope_per_s: c[1],
+            level_u: (g.transpose() * covariance * g)[0].max(0.0).sqrt(),
+            slope_u: covariance[(1, 1)].max(0.0).sqrt(),
+            ..apart[k]
+        }
+    };
+    Some([at(0), at(1)])
 }
 
 #[cfg(test)]
@@ -112,6 +202,22 @@ mod tests {
         let y: Vec<f64> = noise(500, 3).iter().zip(&t).map(|(z, t)| 2.0 * t + 0.1 * z).collect();
         let q = fit(&t, &y, 0..500, 6.0).expect("fit");
         assert!((q.level - 12.0).abs() < 4.0 * q.level_u && q.level_u < 0.05, "{q:?}");
+    }
+
+    #[test]
+    fn one_drift_through_both_stretches_is_seen_as_one_line() {
+        let t: Vec<f64> = (0..2000).map(|i| i as f64 * 0.01).collect();
+        let y: Vec<f64> = noise(2000, 8)
+            .iter()
+            .zip(&t)
+            .map(|(z, t)| 1.0 + 0.05 * t - if *t > 10.0 { 3.0 } else { 0.0 } + 0.2 * z)
+            .collect();
+        for step in [Some(-3.0), None] {
+            let [a, b] = fit_together(&t, &y, [0..400, 1300..2000], [4.0, 13.0], step).expect("one line");
+            assert!((a.level - 1.2).abs() < 4.0 * a.level_u && a.level_u < 0.03, "{step:?} {a:?}");
+            assert!((b.level + 1.35).abs() < 4.0 * b.level_u && b.level_u < 0.03, "{step:?} {b:?}");
+        }
+        assert_eq!(fit_together(&t, &y, [0..400, 1300..2000], [4.0, 13.0], Some(0.0)), None);
     }
 
     #[test]

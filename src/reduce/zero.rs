@@ -32,6 +32,9 @@ pub struct Zero {
 const BURSTS_OF_QUIET: f64 = 2.0;
 const LEAST_QUIET_S: f64 = 3.0;
 
+/// Drift through the burst that a zero known on one side only is allowed for, at most, as a share of peak.
+const ONE_SIDED_SHARE: f64 = 0.001;
+
 /// Rounds of zero, impulse and weight until they agree.
 const WEIGHT_ROUNDS: usize = 6;
 
@@ -45,15 +48,13 @@ pub fn correct(record: &Record<'_>) -> Zero {
     let burst = burn.start.saturating_sub(record.segmentation.block)..(burn.end + margin).min(n);
     let start_s = time_s[burn.start];
     let end_s = time_s[burst.end - 1];
-    let fit = |range: Option<Range<usize>>, at_s: f64| range.and_then(|r| quiet::fit(time_s, &record.force_n, r, at_s));
-    let (before_fit, after_fit) = (fit(before.clone(), start_s), fit(after.clone(), end_s));
-
     let downward = match record.orientation {
         Orientation::Horizontal => 0.0,
         Orientation::NozzleUp => -1.0,
         Orientation::NozzleDown => 1.0,
     };
     let weighed = record.inputs.run.motor.propellant_mass_kg;
+    let (before_fit, after_fit) = levels(record, &before, &after, [start_s, end_s], downward);
     let plain = Baseline::new(before_fit, after_fit, start_s, end_s, 0.0);
     let shift = plain.shift_n();
     let shift_u = plain.shift_u_n().unwrap_or(0.0);
@@ -71,7 +72,12 @@ pub fn correct(record: &Record<'_>) -> Zero {
     let baseline = Baseline::new(before_fit, after_fit, start_s, end_s, weight_shift_n);
     let drift_n = baseline.drift_n;
     let excess = (drift_n * drift_n - shift_u * shift_u).max(0.0).sqrt();
-    let drift_u_n = excess / 12f64.sqrt();
+    // With a zero on one side only, whatever slope its stretch could hide goes on through the burst, within reason.
+    let one_sided = match (before_fit, after_fit) {
+        (Some(q), None) | (None, Some(q)) => (0.5 * q.slope_u * burst_s).min(ONE_SIDED_SHARE * burn.peak.abs()),
+        _ => 0.0,
+    };
+    let drift_u_n = (excess / 12f64.sqrt()).hypot(one_sided);
     let shift_mass_kg = match (downward == 0.0, shift) {
         (false, Some(shift)) if shift * downward > 0.0 => {
             Some((shift.abs() / record.gravity.value_m_s2, shift_u / record.gravity.value_m_s2))
@@ -86,6 +92,36 @@ pub fn correct(record: &Record<'_>) -> Zero {
         burst.start.saturating_sub(pad).max(lower.min(burst.start))..(burst.end + pad).min(upper.max(burst.end));
     let thrust_n = subtract(record, &baseline, &window, &burst);
     Zero { baseline, burst, thrust_n, window, shift_mass_kg, wrong_way, drift_n, drift_u_n }
+}
+
+/// Zero at both ends of the burst: one line through both quiet stretches where that explains them, else a line each.
+fn levels(
+    record: &Record<'_>,
+    before: &Option<Range<usize>>,
+    after: &Option<Range<usize>>,
+    at_s: [f64; 2],
+    downward: f64,
+) -> (Option<QuietFit>, Option<QuietFit>) {
+    let (t, f) = (&record.time_s, &record.force_n);
+    let weighed = record.inputs.run.motor.propellant_mass_kg;
+    let step = match (downward == 0.0, weighed) {
+        (true, _) => Some(0.0),
+        (false, Some(mass)) => Some(downward * mass.value * record.gravity.value_m_s2),
+        (false, None) => None,
+    };
+    match (before, after) {
+        (Some(b), Some(a)) => match quiet::fit_together(t, f, [b.clone(), a.clone()], at_s, step) {
+            Some([b, a]) => (Some(b), Some(a)),
+            None => (quiet::fit(t, f, b.clone(), at_s[0]), quiet::fit(t, f, a.clone(), at_s[1])),
+        },
+        // A zero known on one side is carried through the burst: only a plain slope is carried with it.
+        (b, a) => {
+            let alone = |r: &Option<Range<usize>>, at: f64| {
+                r.clone().and_then(|r| quiet::fit_with(t, f, r, at, quiet::SLOPE_EVIDENCE_BEYOND))
+            };
+            (alone(b, at_s[0]), alone(a, at_s[1]))
+        }
+    }
 }
 
 /// Force less zero over `window`; the weight part goes with impulse, so impulse and zero are found in turn.
