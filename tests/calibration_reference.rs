@@ -101,7 +101,8 @@ fn points_from_a_table() {
     let pairs = swapped(table(include_str!("reference/pontius.csv")));
     let folder = tempfile::tempdir().unwrap();
     let lines: Vec<String> = pairs.iter().map(|(force, reading)| format!("{force},{reading},up")).collect();
-    std::fs::write(folder.path().join("points.csv"), format!("mass,reading,direction\n{}\n", lines.join("\n"))).unwrap();
+    std::fs::write(folder.path().join("points.csv"), format!("mass,reading,direction\n{}\n", lines.join("\n")))
+        .unwrap();
     let cell = folder.path().join("cell.toml");
     std::fs::write(&cell, "[points]\nunit = \"N\"\nreading_unit = \"mV\"\nfile = \"points.csv\"\n").unwrap();
     let found = burntally::calibration::load(&cell, &SiteSpec::default(), None).unwrap();
@@ -173,7 +174,12 @@ fn gravity_and_buoyancy_are_relative_errors() {
     let found = load_text(Path::new("cell.toml"), text, &site, None).unwrap().calibration;
     let part = |source: ScaleSource| {
         let errors = found.errors.as_ref().unwrap();
-        errors.iter().filter(|error| error.source == source).map(|error| found.force_error_n(error, 100.0).powi(2)).sum::<f64>().sqrt()
+        errors
+            .iter()
+            .filter(|error| error.source == source)
+            .map(|error| found.force_error_n(error, 100.0).powi(2))
+            .sum::<f64>()
+            .sqrt()
     };
     assert!((part(ScaleSource::Gravity) - 0.1 / 3f64.sqrt()).abs() < 1e-9);
     // 10 % of 1.2/8000, rectangular

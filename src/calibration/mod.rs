@@ -5,6 +5,7 @@ mod degree;
 mod file;
 mod fit;
 mod forms;
+mod noise;
 mod points;
 mod report;
 mod table;
