@@ -139,6 +139,25 @@ fn the_stated_uncertainty_is_the_spread_of_the_errors() {
     }
 }
 
+/// A bend half as large as the one that is always seen, between the points where the line meets it: whether it is
+/// adopted, suspected or missed, two standard uncertainties hold the truth nine times in ten.
+#[test]
+fn a_bend_too_small_to_be_sure_of_is_still_an_error() {
+    fn faint(force: f64) -> f64 {
+        8123.0 + 901.0 * force * (1.0 - 0.004 * force / 200.0)
+    }
+    let mut random = ChaCha8Rng::seed_from_u64(16);
+    for down in [true, false] {
+        let within = (0..300).filter(|_| {
+            let found = simulate(Setup { cell: faint, down, ..SETUP }, &mut random).calibration;
+            let error = found.force_n(faint(100.0)).unwrap() - found.force_n(faint(0.0)).unwrap() - 100.0;
+            error.abs() < 2.0 * found.difference_uncertainty_n(100.0, 0.0).unwrap()
+        });
+        let within = within.count();
+        assert!(within >= 270, "{down}: {within}");
+    }
+}
+
 /// Beyond the heaviest weight the uncertainty grows, and covers what a bend that was not asked for leaves.
 #[test]
 fn beyond_the_heaviest_weight_the_next_degree_counts() {

@@ -7,6 +7,8 @@ use crate::uncertainty::statistics::{f_upper_tail, t_two_sided};
 
 /// A higher degree must be this improbable as chance.
 const STRICT_LEVEL: f64 = 0.001;
+/// Curvature less improbable than this as chance, but not adopted, is suspected: it counts as an error of the curve.
+const SUSPECT_LEVEL: f64 = 0.05;
 const HIGHEST: usize = 3;
 
 /// The fit chosen, and why.
@@ -15,6 +17,8 @@ pub(super) struct Choice {
     pub degree: usize,
     pub fit: Fit,
     pub reason: String,
+    /// Curvature suspected but not adopted: what it would add to the coefficients of the force in newtons.
+    pub suspected: Option<Vec<f64>>,
 }
 
 /// Points to fit: forces and readings, and what one standard uncertainty of each independent error of the weights does
@@ -42,9 +46,15 @@ pub(super) fn choose(evidence: Evidence<'_>) -> Option<Choice> {
     } else {
         "a straight line: no higher degree fits better than chance allows".to_string()
     };
+    let mut suspected = None;
+    let by_means_chance = |from, to| chance(evidence, true, from, to);
     for degree in 2..=highest {
         let Some(better) = fit::fit(evidence.forces_n, evidence.readings, degree) else { continue };
-        let Some(chance) = chance(evidence, chosen, degree) else { continue };
+        let Some(chance) = chance(evidence, evidence.weight_errors.is_empty(), chosen, degree) else { continue };
+        // the means again: the same weight hung twice must not make suspicion certain
+        if by_means_chance(chosen, degree).is_some_and(|chance| chance < SUSPECT_LEVEL) {
+            suspected = Some(added(&current, &better));
+        }
         if chance >= STRICT_LEVEL {
             continue;
         }
@@ -79,14 +89,15 @@ pub(super) fn choose(evidence: Evidence<'_>) -> Option<Choice> {
         );
         chosen = degree;
         current = better;
+        suspected = None;
     }
-    Some(Choice { degree: chosen, fit: current, reason })
+    Some(Choice { degree: chosen, fit: current, reason, suspected })
 }
 
 /// Probability that the drop in the sum of squares is chance.
-fn chance(evidence: Evidence<'_>, from: usize, to: usize) -> Option<f64> {
+fn chance(evidence: Evidence<'_>, by_means: bool, from: usize, to: usize) -> Option<f64> {
     let means;
-    let (forces, readings) = if evidence.weight_errors.is_empty() {
+    let (forces, readings) = if by_means {
         means = level_means(evidence.forces_n, evidence.readings);
         (means.0.as_slice(), means.1.as_slice())
     } else {
@@ -117,6 +128,13 @@ fn level_means(forces_n: &[f64], readings: &[f64]) -> (Vec<f64>, Vec<f64>) {
     }
     let means = sums.iter().map(|(sum, count)| sum / (*count).max(1) as f64).collect();
     (distinct, means)
+}
+
+/// Coefficients of the higher curve less those of the lower one.
+fn added(lower: &Fit, higher: &Fit) -> Vec<f64> {
+    let lower = lower.coefficients();
+    let of_lower = |power: usize| lower.get(power).copied().unwrap_or(0.0);
+    higher.coefficients().iter().enumerate().map(|(power, coefficient)| coefficient - of_lower(power)).collect()
 }
 
 fn departures(lower: &Fit, higher: &Fit, forces_n: &[f64]) -> Vec<f64> {

@@ -449,3 +449,170 @@ fn weights(root: &Table<'_>, unit: Unit, gravity: &Gravity) -> Result<Weights, P
     }
     Ok(weights)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::calibration::{ErrorShape, ScaleSource};
+
+    const POINTS: &str =
+        "[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 10.0], [5, 510.0], [10, 1011.0]]\n";
+
+    fn read(text: &str) -> Result<Calibrated, Problem> {
+        load_text(Path::new("bench/cell.toml"), text, &SiteSpec::default(), None)
+    }
+
+    fn unit(symbol: &str) -> Option<Unit> {
+        quantity::find(symbol)
+    }
+
+    #[test]
+    fn a_full_file_by_points() {
+        let text = "[cell]\nname = \"2 kN S-beam\"\ncapacity = \"2 kN\"\ndate = \"2026-04-02\"\n[site]\nlatitude = \"44.7 deg\"\n\
+            height = \"310 m\"\n[weights]\ndensity = \"7850 kg/m3\"\ntolerance = \"0.05 %\"\nerrors = \"each\"\n[points]\nunit = \"kg\"\n\
+            reading_unit = \"count\"\nup = [[0, 8123.4], [5, 52311.0], [10, 96490.2]]\ndown = [[10, 96502.0], [5, 52330.5], [0, 8125.1]]\n\
+            [fit]\ndegree = 1\n";
+        let found = read(text).unwrap_or_else(|problem| panic!("{problem}"));
+        assert_eq!(found.calibration.name, "2 kN S-beam");
+        assert_eq!(found.calibration.capacity_n, Some(2000.0));
+        assert_eq!(found.calibration.cautions, Vec::<String>::new());
+        assert!(found.report.hysteresis_percent.is_some() && found.report.weights_covariance.is_some());
+        let sources: std::collections::BTreeSet<_> =
+            found.calibration.errors.iter().flatten().map(|error| error.source).collect();
+        for source in [
+            ScaleSource::Fit,
+            ScaleSource::Weights,
+            ScaleSource::Gravity,
+            ScaleSource::Buoyancy,
+            ScaleSource::Extrapolation,
+        ] {
+            assert!(sources.contains(&source), "{source:?}");
+        }
+        let json = serde_json::to_value(&found.report).unwrap();
+        for key in [
+            "degree",
+            "coefficients",
+            "covariance",
+            "residual_standard_deviation",
+            "reading_unit",
+            "nonlinearity_percent",
+            "hysteresis_percent",
+            "repeatability_percent",
+            "range_n",
+            "points",
+        ] {
+            assert!(json.get(key).is_some(), "{key}");
+        }
+        assert!(json["repeatability_percent"].is_null());
+    }
+
+    /// Two points say nothing of scatter: no covariance, a caution, and what the weights do is still known.
+    #[test]
+    fn two_points_claim_no_scatter() {
+        let two = "[points]\nunit = \"kg\"\nreading_unit = \"mV\"\nup = [[0, 0.1], [10, 5.3]]\n";
+        let bare = read(two).unwrap();
+        assert_eq!(bare.calibration.errors, None);
+        assert_eq!((&bare.report.covariance, bare.report.residual_standard_deviation), (&None, None));
+        assert!(bare.calibration.cautions.iter().any(|caution| caution.contains("as many coefficients")));
+        let stated = read(&format!("[weights]\ntolerance = \"5 g\"\n{two}")).unwrap();
+        let errors = stated.calibration.errors.as_ref().unwrap();
+        assert!(errors.iter().all(|error| error.source != ScaleSource::Fit));
+        let weights = errors.iter().find(|error| error.source == ScaleSource::Weights).unwrap();
+        let top = stated.calibration.range_n.unwrap()[1];
+        // 5 g of 10 kg, rectangular
+        let expected = top * 5e-4 / 3f64.sqrt();
+        let found = stated.calibration.force_error_n(weights, top).abs();
+        assert!((found / expected - 1.0).abs() < 1e-3, "{found} {expected}");
+    }
+
+    /// A shared error is invisible in scatter: without its tolerance the scale's error is not known.
+    #[test]
+    fn a_shared_error_without_tolerance_is_unknown() {
+        assert!(read(POINTS).unwrap().calibration.errors.is_some());
+        assert_eq!(read(&format!("[weights]\nerrors = \"common\"\n{POINTS}")).unwrap().calibration.errors, None);
+        let common = read(&format!("[weights]\nerrors = \"common\"\ntolerance = \"0.3 %\"\n{POINTS}")).unwrap();
+        let errors = common.calibration.errors.unwrap();
+        let weights: Vec<_> = errors.iter().filter(|error| error.source == ScaleSource::Weights).collect();
+        assert_eq!(weights.len(), 1);
+        assert_eq!(weights[0].shape, ErrorShape::Relative(0.003 / 3f64.sqrt()));
+    }
+
+    #[test]
+    fn readings_in_another_unit_are_converted_or_refused() {
+        let text = POINTS.replace("count", "mV");
+        let volts = load_text(Path::new("c.toml"), &text, &SiteSpec::default(), unit("V")).unwrap().calibration;
+        let millivolts = read(&text).unwrap().calibration;
+        assert!((volts.force_n(0.5).unwrap() - millivolts.force_n(500.0).unwrap()).abs() < 1e-9);
+        let problem = load_text(Path::new("c.toml"), POINTS, &SiteSpec::default(), unit("mV")).unwrap_err();
+        assert!(problem.found.contains("mV") && problem.found.contains("count"));
+        assert_eq!(problem.file.as_deref(), Some(Path::new("c.toml")));
+    }
+
+    #[test]
+    fn constants_and_rating() {
+        let line = read("[constants]\nslope = \"0.000113 N/count\"\nslope_uncertainty = \"0.3 %\"\nzero = 8123\n")
+            .unwrap()
+            .calibration;
+        assert!((line.force_n(8123.0 + 1e6).unwrap() - 113.0).abs() < 1e-9);
+        assert!((line.force_uncertainty_n(100.0).unwrap() - 0.3 / 3f64.sqrt()).abs() < 1e-12);
+        assert_eq!(read("[constants]\nslope = \"0.000113 N/count\"\n").unwrap().calibration.errors, None);
+        let sheet = "[cell]\ncapacity = \"2 kN\"\n[rating]\nrated_output = \"2.0 mV/V\"\nexcitation = \"5 V\"\naccuracy = \"0.25 %\"\n";
+        let millivolts = load_text(Path::new("c.toml"), sheet, &SiteSpec::default(), unit("mV")).unwrap().calibration;
+        assert!((millivolts.force_n(10.0).unwrap() - 2000.0).abs() < 1e-9);
+        let problem = load_text(Path::new("c.toml"), sheet, &SiteSpec::default(), unit("count")).unwrap_err();
+        assert!(problem.to_string().contains("adc_bits"), "{problem}");
+    }
+
+    #[test]
+    fn refusals_have_a_line_and_a_remedy() {
+        let with = |extra: &str| format!("{POINTS}{extra}");
+        let cases: Vec<(String, u64, &str)> = vec![
+            ("[cell]\nname = \"x\"\n".into(), 1, "none of [points]"),
+            (with("[constants]\nslope = \"1 N/V\"\n"), 5, "exactly one"),
+            (with("[fit]\ndegree = 4\n"), 6, "1, 2 or 3"),
+            (with("[fit]\ndegree = 3\n"), 1, "distinct loads"),
+            (with("[weights]\ntolerance = 0.5 \nmasses = 3\n"), 7, "tolerance"),
+            (with("[weights]\nerrors = \"eech\"\n"), 6, "each"),
+            (with("[weights]\ndensity = \"7.85 kg/m3\"\n"), 6, "7850"),
+            (with("[weights]\ntolerance = \"1 s\"\n"), 6, "a plain ratio"),
+            (POINTS.replace("\"kg\"", "\"V\""), 2, "voltage"),
+            (POINTS.replace("\"count\"", "\"kounts\""), 3, "count"),
+            (POINTS.replace("[5, 510.0]", "[5]"), 4, "pair"),
+            (POINTS.replace("[5, 510.0]", "[5, nan]"), 4, "pair"),
+            ("[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 1], [0, 1.1]]\n".into(), 1, "distinct"),
+            ("[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 7], [5, 7]]\n".into(), 1, "do not change"),
+            ("[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 7]]\n".into(), 1, "at least two"),
+            ("[points]\nunit = \"kg\"\nup = [[0, 7]]\n".into(), 1, "reading_unit"),
+            ("[constants]\nslope = 0.1\n".into(), 2, "N/count"),
+            ("[constants]\nslope = \"5 N\"\n".into(), 2, "a force per count"),
+            ("[constants]\nslope = \"5 ± 1 N/V\"\nslope_uncertainty = \"1 %\"\n".into(), 3, "twice"),
+            ("[constants]\nslop = \"5 N/V\"\n".into(), 2, "slope"),
+            ("[rating]\nrated_output = \"2 mV/V\"\n".into(), 1, "capacity"),
+            ("[rating]\nexcitation = \"2 V\"\n[cell]\ncapacity = \"2 kN\"\n".into(), 1, "rated_output"),
+        ];
+        for (text, line, part) in cases {
+            let problem = read(&text).expect_err(&text);
+            let message = problem.to_string();
+            assert_eq!(problem.line, Some(line), "{text}\n{message}");
+            assert!(message.contains(part), "{text}\n{message}");
+        }
+    }
+
+    proptest::proptest! {
+        #[test]
+        fn never_panics(cut in 0usize..400, junk in "\\PC{0,12}") {
+            let at = cut.min(POINTS.len());
+            let _ = read(&format!("{}{junk}{}", &POINTS[..at], &POINTS[at..]));
+        }
+
+        #[test]
+        fn any_points_are_fitted_or_refused(points in proptest::collection::vec((proptest::num::f64::ANY, proptest::num::f64::ANY), 0..8)) {
+            let list: Vec<String> = points.iter().map(|(load, reading)| format!("[{load:e}, {reading:e}]").replace("NaN", "nan")).collect();
+            let text = format!("[points]\nunit = \"N\"\nreading_unit = \"mV\"\nup = [{}]\n", list.join(", "));
+            if let Ok(found) = read(&text) {
+                let _ = found.calibration.force_n(1.0);
+                let _ = found.calibration.force_uncertainty_n(1.0);
+            }
+        }
+    }
+}

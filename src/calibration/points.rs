@@ -106,6 +106,12 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
             );
         }
     }
+    if let Some(suspected) = &choice.suspected {
+        calibration
+            .findings
+            .push("curvature is suspected but not established: it counts as an error of the curve".into());
+        errors.push(ErrorDirection { source: ScaleSource::Fit, shape: ErrorShape::Coefficients(suspected.clone()) });
+    }
     match (&points.tolerance, points.weight_errors) {
         (Some(Tolerance::Relative(relative)), WeightErrors::Common) => {
             let size = relative.standard_uncertainty.unwrap_or(relative.value / 3f64.sqrt());
@@ -188,7 +194,7 @@ fn chosen(points: &Points, evidence: Evidence<'_>, distinct: &[f64]) -> Result<C
                 return Err(too_few(degree));
             }
             let fit = fit::fit(evidence.forces_n, evidence.readings, degree).ok_or_else(|| too_few(degree))?;
-            Ok(Choice { degree, fit, reason: format!("degree {degree}, as asked for under [fit]") })
+            Ok(Choice { degree, fit, reason: format!("degree {degree}, as asked for under [fit]"), suspected: None })
         }
     }
 }
