@@ -83,7 +83,7 @@ pub(super) fn choose(evidence: Evidence<'_>) -> Option<Choice> {
         reason = format!(
             "degree {degree}: it bends by {:.4} % of span from degree {chosen}, which chance makes with probability \
              {chance:.1e} and the weights' tolerance \
-             with the scatter of the readings could make {:.4} % of",
+             with the scatter of the readings could make {:.4} %",
             percent(largest),
             percent(bound)
         );

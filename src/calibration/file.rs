@@ -1,12 +1,11 @@
 //! Calibration files: TOML with exactly one of `[points]`, `[constants]`, `[rating]`.
 
+use super::Calibration;
+use super::file_points::from_points;
 use super::forms::{self, Constants, Rating};
-use super::points::{self, Listed, Points};
 use super::report::CalibrationReport;
-use super::weights::{AIR_DENSITY_KG_M3, CONVENTIONAL_DENSITY_KG_M3, Tolerance, WeightErrors};
-use super::{Calibration, table};
 use crate::problem::Problem;
-use crate::quantity::{self, Dimension, Measured, Unit};
+use crate::quantity::{self, Dimension, Unit};
 use crate::run::document::{Document, Table};
 use crate::run::{Gravity, SiteSpec, gravity, read_site};
 use std::path::{Path, PathBuf};
@@ -44,10 +43,10 @@ pub fn load_text(
 }
 
 /// `[cell]`.
-struct Cell {
-    name: String,
+pub(super) struct Cell {
+    pub name: String,
     /// N or Pa.
-    capacity: Option<(f64, Dimension)>,
+    pub capacity: Option<(f64, Dimension)>,
 }
 
 fn from_document(document: &Document, run_site: &SiteSpec, wanted: Option<Unit>) -> Result<Calibrated, Problem> {
@@ -151,11 +150,6 @@ fn plain(calibration: Calibration, reason: &str) -> Calibrated {
     Calibrated { calibration, report, files: Vec::new() }
 }
 
-/// Limits stand in the file without the sign ±: a plain value is the half-width.
-fn standard_of(limits: Measured) -> f64 {
-    limits.standard_uncertainty.unwrap_or(limits.value.abs() / 3f64.sqrt())
-}
-
 fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Calibration, Problem> {
     let Some(table) = root.table("constants")? else { return Err(Problem::new("[constants] is missing")) };
     table.only(&["slope", "slope_uncertainty", "zero"])?;
@@ -184,18 +178,10 @@ fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Ca
         );
     }
     let own = slope.standard_uncertainty.map(|standard| standard / slope.value.abs());
-    let stated = table.quantity("slope_uncertainty", Dimension::Ratio)?;
+    let stated = table.limits("slope_uncertainty")?;
     if let (Some(_), Some(stated)) = (own, &stated) {
         let problem =
             Problem::new("the slope's uncertainty is stated twice").remedy("keep slope_uncertainty, or the ± in slope");
-        return Err(table.problem_at(&stated.span, problem));
-    }
-    if let Some(stated) = &stated
-        && !(0.0..1.0).contains(&stated.value.value)
-    {
-        let problem = Problem::new("constants.slope_uncertainty is out of range")
-            .expected("limits, 0 to 100 %")
-            .remedy("write slope_uncertainty = \"0.3 %\"");
         return Err(table.problem_at(&stated.span, problem));
     }
     let unit = forms::reading_unit_of(slope_unit);
@@ -207,7 +193,7 @@ fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Ca
     let constants = Constants {
         slope,
         slope_unit,
-        slope_relative: own.or(stated.map(|found| standard_of(found.value))),
+        slope_relative: own.or(stated.map(|found| found.value / 3f64.sqrt())),
         zero: zero.unwrap_or(0.0),
     };
     let mut calibration =
@@ -216,7 +202,7 @@ fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Ca
     Ok(calibration)
 }
 
-fn capacity_of(cell: &Cell, measures: Dimension) -> Option<f64> {
+pub(super) fn capacity_of(cell: &Cell, measures: Dimension) -> Option<f64> {
     cell.capacity.filter(|(_, dimension)| *dimension == measures).map(|(capacity, _)| capacity)
 }
 
@@ -237,15 +223,7 @@ fn from_rating(root: &Table<'_>, cell: &Cell, wanted: Option<Unit>) -> Result<Ca
                 .remedy("write [cell] and capacity = \"2 kN\""),
         ));
     };
-    let accuracy = table.quantity("accuracy", Dimension::Ratio)?;
-    if let Some(found) = &accuracy
-        && !(0.0..1.0).contains(&found.value.value)
-    {
-        let problem = Problem::new("rating.accuracy is out of range")
-            .expected("limits as a fraction of capacity, 0 to 100 %")
-            .remedy("write accuracy = \"0.25 %\"");
-        return Err(table.problem_at(&found.span, problem));
-    }
+    let accuracy = table.limits("accuracy")?;
     let adc_bits = table.counting("adc_bits")?;
     if let Some(found) = &adc_bits
         && found.value > 64
@@ -270,7 +248,7 @@ fn from_rating(root: &Table<'_>, cell: &Cell, wanted: Option<Unit>) -> Result<Ca
         adc_bits: adc_bits.map(|found| found.value as u32),
         adc_reference_v: table.positive("adc_reference", Dimension::Voltage)?.map(|found| found.value),
         gain: gain.map(|found| found.value),
-        accuracy: accuracy.map(|found| found.value.value),
+        accuracy: accuracy.map(|found| found.value),
     };
     let natural = match (rating.adc_bits, rating.excitation_v) {
         (Some(_), _) => "count",
@@ -279,175 +257,6 @@ fn from_rating(root: &Table<'_>, cell: &Cell, wanted: Option<Unit>) -> Result<Ca
     };
     let unit = wanted.or_else(|| quantity::find(natural)).ok_or_else(|| Problem::new("no reading unit"))?;
     forms::rating(cell.name.clone(), &rating, unit).map_err(|problem| table.problem(problem))
-}
-
-fn from_points(
-    root: &Table<'_>,
-    cell: &Cell,
-    gravity: Gravity,
-    files: &mut Vec<PathBuf>,
-) -> Result<Calibrated, Problem> {
-    let Some(table) = root.table("points")? else { return Err(Problem::new("[points] is missing")) };
-    table.only(&["unit", "reading_unit", "up", "down", "file"])?;
-    let unit = unit_among(
-        &table,
-        "unit",
-        &[Dimension::Mass, Dimension::Force, Dimension::Pressure],
-        "unit = \"kg\" for weights, or \"N\" for forces",
-    )?;
-    let reading_unit = unit_among(
-        &table,
-        "reading_unit",
-        &[
-            Dimension::Count,
-            Dimension::Voltage,
-            Dimension::VoltageRatio,
-            Dimension::Force,
-            Dimension::Mass,
-            Dimension::Pressure,
-        ],
-        "reading_unit = \"count\"",
-    )?;
-    let listed = listed(&table, files)?;
-    let weights = weights(root, unit, &gravity)?;
-    let degree = match root.table("fit")? {
-        Some(fit) => {
-            fit.only(&["degree"])?;
-            let degree = fit.counting("degree")?;
-            if let Some(found) = &degree
-                && found.value > 3
-            {
-                let problem = Problem::new(format!("fit.degree is {}", found.value))
-                    .expected("1, 2 or 3")
-                    .remedy("write degree = 1");
-                return Err(fit.problem_at(&found.span, problem));
-            }
-            degree.map(|found| found.value)
-        }
-        None => None,
-    };
-    let measures = if unit.dimension == Dimension::Pressure { Dimension::Pressure } else { Dimension::Force };
-    let points = Points {
-        name: cell.name.clone(),
-        capacity_n: capacity_of(cell, measures),
-        listed,
-        unit,
-        reading_unit,
-        gravity,
-        density_kg_m3: weights.density_kg_m3,
-        tolerance: weights.tolerance,
-        weight_errors: weights.errors,
-        weight_errors_stated: weights.errors_stated,
-        degree,
-    };
-    points::calibrate(&points).map_err(|problem| table.problem(problem))
-}
-
-fn unit_among(table: &Table<'_>, key: &str, dimensions: &[Dimension], remedy: &str) -> Result<Unit, Problem> {
-    let allowed: Vec<&str> =
-        quantity::all().iter().filter(|unit| dimensions.contains(&unit.dimension)).map(|unit| unit.symbol).collect();
-    let expected = format!("one of: {}", allowed.join(", "));
-    let Some(found) = table.text(key)? else {
-        return Err(table.missing(key, &expected, &format!("write {remedy} under [{}]", table.name)));
-    };
-    match quantity::find(&found.value) {
-        Some(unit) if dimensions.contains(&unit.dimension) => Ok(unit),
-        Some(unit) => {
-            let problem = Problem::new(format!("{} is {}, {}", table.full(key), unit.symbol, unit.dimension.words()));
-            Err(table.problem_at(&found.span, problem.expected(expected).remedy(format!("write {remedy}"))))
-        }
-        None => Err(table.problem_at(&found.span, quantity::unknown_unit(&found.value, None).expected(expected))),
-    }
-}
-
-fn listed(table: &Table<'_>, files: &mut Vec<PathBuf>) -> Result<Vec<Listed>, Problem> {
-    let mut listed = Vec::new();
-    for (key, rising) in [("up", true), ("down", false)] {
-        for found in table.pairs(key)?.unwrap_or_default() {
-            let [load, reading] = found.value;
-            listed.push(Listed { load, reading, rising });
-        }
-    }
-    match table.text("file")? {
-        Some(file) if listed.is_empty() => {
-            let path = table.document().resolve(&file.value);
-            listed = table::read(&Document::read(&path)?)?;
-            files.push(path);
-        }
-        Some(file) => {
-            let problem = Problem::new("[points] holds points and names a file of them")
-                .expected("one of the two")
-                .remedy("remove file, or up and down");
-            return Err(table.problem_at(&file.span, problem));
-        }
-        None => {}
-    }
-    if listed.len() < 2 {
-        return Err(table.problem(
-            Problem::new(format!("[points] holds {} point(s)", listed.len()))
-                .expected("at least two loads with their readings")
-                .remedy("write up = [[0, 8123.4], [5, 52311.0], [10, 96490.2]]: load, reading"),
-        ));
-    }
-    Ok(listed)
-}
-
-struct Weights {
-    density_kg_m3: f64,
-    tolerance: Option<Tolerance>,
-    errors: WeightErrors,
-    errors_stated: bool,
-}
-
-fn weights(root: &Table<'_>, unit: Unit, gravity: &Gravity) -> Result<Weights, Problem> {
-    let mut weights = Weights {
-        density_kg_m3: CONVENTIONAL_DENSITY_KG_M3,
-        tolerance: None,
-        errors: WeightErrors::Each,
-        errors_stated: false,
-    };
-    let Some(table) = root.table("weights")? else { return Ok(weights) };
-    table.only(&["density", "tolerance", "errors"])?;
-    if let Some(density) = table.positive("density", Dimension::Density)? {
-        if density.value < 500.0 || density.value > 25000.0 {
-            let problem = Problem::new(format!("weights.density is {} kg/m3", density.value))
-                .expected("the density of a solid weight, 500 to 25000 kg/m3")
-                .remedy("write density = \"7850 kg/m3\" for steel, or leave it out for conventional masses");
-            return Err(table.problem_with("density", problem));
-        }
-        weights.density_kg_m3 = density.value;
-    }
-    let kinds = match unit.dimension {
-        Dimension::Mass => vec![Dimension::Ratio, Dimension::Mass, Dimension::Force],
-        other => vec![Dimension::Ratio, other],
-    };
-    if let Some(found) = table.quantity_among("tolerance", &kinds)? {
-        let (measured, written) = found.value;
-        let negative = measured.value < 0.0;
-        if negative || written.dimension == Dimension::Ratio && measured.value >= 1.0 {
-            let problem = Problem::new("weights.tolerance is out of range")
-                .expected("limits of a weight's error, from 0 up")
-                .remedy("write tolerance = \"0.05 %\", or \"0.5 g\"");
-            return Err(table.problem_at(&found.span, problem));
-        }
-        let in_air = gravity.value_m_s2 * (1.0 - AIR_DENSITY_KG_M3 / weights.density_kg_m3);
-        let scaled = |factor: f64| Measured {
-            value: measured.value * factor,
-            standard_uncertainty: measured.standard_uncertainty.map(|standard| standard * factor),
-            limits: measured.limits.map(|limits| limits * factor),
-        };
-        weights.tolerance = Some(match written.dimension {
-            Dimension::Ratio => Tolerance::Relative(measured),
-            Dimension::Mass => Tolerance::ForceN(scaled(in_air)),
-            _ => Tolerance::ForceN(measured),
-        });
-    }
-    let words = [("each", WeightErrors::Each), ("stack", WeightErrors::Stack), ("common", WeightErrors::Common)];
-    if let Some(errors) = table.word("errors", &words)? {
-        weights.errors = errors;
-        weights.errors_stated = errors != WeightErrors::Each;
-    }
-    Ok(weights)
 }
 
 #[cfg(test)]
@@ -586,6 +395,8 @@ mod tests {
             ("[constants]\nslope = 0.1\n".into(), 2, "N/count"),
             ("[constants]\nslope = \"5 N\"\n".into(), 2, "a force per count"),
             ("[constants]\nslope = \"5 ± 1 N/V\"\nslope_uncertainty = \"1 %\"\n".into(), 3, "twice"),
+            ("[constants]\nslope = \"5 N/V\"\nslope_uncertainty = \"1 ± 0.1 %\"\n".into(), 3, "half-width"),
+            (with("[weights]\ntolerance = \"5 ± 1 g\"\n"), 6, "half-width"),
             ("[constants]\nslop = \"5 N/V\"\n".into(), 2, "slope"),
             ("[rating]\nrated_output = \"2 mV/V\"\n".into(), 1, "capacity"),
             ("[rating]\nexcitation = \"2 V\"\n[cell]\ncapacity = \"2 kN\"\n".into(), 1, "rated_output"),

@@ -3,6 +3,7 @@
 mod curve;
 mod degree;
 mod file;
+mod file_points;
 mod fit;
 mod forms;
 mod noise;

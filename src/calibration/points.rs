@@ -71,7 +71,7 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
     let coefficients = choice.fit.coefficients();
     let span = (value(&coefficients, high) - value(&coefficients, low)).abs();
     let largest = readings.iter().fold(0.0f64, |largest, reading| largest.max(reading.abs()));
-    if !(span > 1e-12 * largest) || !coefficients.iter().all(|coefficient| coefficient.is_finite()) {
+    if span <= 1e-12 * largest || !span.is_finite() || !coefficients.iter().all(|coefficient| coefficient.is_finite()) {
         return Err(Problem::new("the readings do not change with the load")
             .expected("readings that follow the weights")
             .remedy("check the columns of the points and their unit"));
@@ -114,7 +114,7 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
     }
     match (&points.tolerance, points.weight_errors) {
         (Some(Tolerance::Relative(relative)), WeightErrors::Common) => {
-            let size = relative.standard_uncertainty.unwrap_or(relative.value / 3f64.sqrt());
+            let size = relative / 3f64.sqrt();
             errors.push(ErrorDirection { source: ScaleSource::Weights, shape: ErrorShape::Relative(size) });
         }
         _ => push_directions(&mut errors, ScaleSource::Weights, &gram(&changes, choice.degree + 1), &choice.fit),
