@@ -33,8 +33,9 @@ pub(super) struct Evidence<'a> {
 /// The lowest degree the points do not speak against.
 ///
 /// A further degree must pass both tests. First: the sum of squares it takes away, by the F test at 0.1 %; without a
-/// stated tolerance the means of each load are tested, since the same weight errs alike each time it hangs. Second: its largest departure from the lower curve must exceed what the weights could make with every error at its limit,
-/// in the worst combination (the weights' forces perturbed, both curves fitted again), by more than the scatter of the
+/// stated tolerance the means of each load are tested, since the same weight errs alike each time it hangs. Second:
+/// its largest departure from the lower curve must exceed what the weights could make with every error at its limit, in
+/// the worst combination (the weights' forces perturbed, both curves fitted again), by more than the scatter of the
 /// readings makes at the same level: weights and scatter together could pass where neither does alone.
 pub(super) fn choose(evidence: Evidence<'_>) -> Option<Choice> {
     let (distinct, _) = levels(evidence.forces_n);
