@@ -1,12 +1,11 @@
 //! Calibration files: TOML with exactly one of `[points]`, `[constants]`, `[rating]`.
 
+use super::Calibration;
+use super::file_points::from_points;
 use super::forms::{self, Constants, Rating};
-use super::points::{self, Listed, Points};
 use super::report::CalibrationReport;
-use super::weights::{AIR_DENSITY_KG_M3, CONVENTIONAL_DENSITY_KG_M3, Tolerance, WeightErrors};
-use super::{Calibration, table};
 use crate::problem::Problem;
-use crate::quantity::{self, Dimension, Measured, Unit};
+use crate::quantity::{self, Dimension, Unit};
 use crate::run::document::{Document, Table};
 use crate::run::{Gravity, SiteSpec, gravity, read_site};
 use std::path::{Path, PathBuf};
@@ -44,10 +43,10 @@ pub fn load_text(
 }
 
 /// `[cell]`.
-struct Cell {
-    name: String,
+pub(super) struct Cell {
+    pub name: String,
     /// N or Pa.
-    capacity: Option<(f64, Dimension)>,
+    pub capacity: Option<(f64, Dimension)>,
 }
 
 fn from_document(document: &Document, run_site: &SiteSpec, wanted: Option<Unit>) -> Result<Calibrated, Problem> {
@@ -151,11 +150,6 @@ fn plain(calibration: Calibration, reason: &str) -> Calibrated {
     Calibrated { calibration, report, files: Vec::new() }
 }
 
-/// Limits stand in the file without the sign ±: a plain value is the half-width.
-fn standard_of(limits: Measured) -> f64 {
-    limits.standard_uncertainty.unwrap_or(limits.value.abs() / 3f64.sqrt())
-}
-
 fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Calibration, Problem> {
     let Some(table) = root.table("constants")? else { return Err(Problem::new("[constants] is missing")) };
     table.only(&["slope", "slope_uncertainty", "zero"])?;
@@ -184,18 +178,10 @@ fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Ca
         );
     }
     let own = slope.standard_uncertainty.map(|standard| standard / slope.value.abs());
-    let stated = table.quantity("slope_uncertainty", Dimension::Ratio)?;
+    let stated = table.limits("slope_uncertainty")?;
     if let (Some(_), Some(stated)) = (own, &stated) {
         let problem =
             Problem::new("the slope's uncertainty is stated twice").remedy("keep slope_uncertainty, or the ± in slope");
-        return Err(table.problem_at(&stated.span, problem));
-    }
-    if let Some(stated) = &stated
-        && !(0.0..1.0).contains(&stated.value.value)
-    {
-        let problem = Problem::new("constants.slope_uncertainty is out of range")
-            .expected("limits, 0 to 100 %")
-            .remedy("write slope_uncertainty = \"0.3 %\"");
         return Err(table.problem_at(&stated.span, problem));
     }
     let unit = forms::reading_unit_of(slope_unit);
@@ -207,7 +193,7 @@ fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Ca
     let constants = Constants {
         slope,
         slope_unit,
-        slope_relative: own.or(stated.map(|found| standard_of(found.value))),
+        slope_relative: own.or(stated.map(|found| found.value / 3f64.sqrt())),
         zero: zero.unwrap_or(0.0),
     };
     let mut calibration =
@@ -216,7 +202,7 @@ fn from_constants(root: &Table<'_>, cell: &Cell, gravity: &Gravity) -> Result<Ca
     Ok(calibration)
 }
 
-fn capacity_of(cell: &Cell, measures: Dimension) -> Option<f64> {
+pub(super) fn capacity_of(cell: &Cell, measures: Dimension) -> Option<f64> {
     cell.capacity.filter(|(_, dimension)| *dimension == measures).map(|(capacity, _)| capacity)
 }
 
@@ -237,15 +223,7 @@ fn from_rating(root: &Table<'_>, cell: &Cell, wanted: Option<Unit>) -> Result<Ca
                 .remedy("write [cell] and capacity = \"2 kN\""),
         ));
     };
-    let accuracy = table.quantity("accuracy", Dimension::Ratio)?;
-    if let Some(found) = &accuracy
-        && !(0.0..1.0).contains(&found.value.value)
-    {
-        let problem = Problem::new("rating.accuracy is out of range")
-            .expected("limits as a fraction of capacity, 0 to 100 %")
-            .remedy("write accuracy = \"0.25 %\"");
-        return Err(table.problem_at(&found.span, problem));
-    }
+    let accuracy = table.limits("accuracy")?;
     let adc_bits = table.counting("adc_bits")?;
     if let Some(found) = &adc_bits
         && found.value > 64
@@ -270,7 +248,7 @@ fn from_rating(root: &Table<'_>, cell: &Cell, wanted: Option<Unit>) -> Result<Ca
         adc_bits: adc_bits.map(|found| found.value as u32),
         adc_reference_v: table.positive("adc_reference", Dimension::Voltage)?.map(|found| found.value),
         gain: gain.map(|found| found.value),
-        accuracy: accuracy.map(|found| found.value.value),
+        accuracy: accuracy.map(|found| found.value),
     };
     let natural = match (rating.adc_bits, rating.excitation_v) {
         (Some(_), _) => "count",
@@ -281,171 +259,171 @@ fn from_rating(root: &Table<'_>, cell: &Cell, wanted: Option<Unit>) -> Result<Ca
     forms::rating(cell.name.clone(), &rating, unit).map_err(|problem| table.problem(problem))
 }
 
-fn from_points(
-    root: &Table<'_>,
-    cell: &Cell,
-    gravity: Gravity,
-    files: &mut Vec<PathBuf>,
-) -> Result<Calibrated, Problem> {
-    let Some(table) = root.table("points")? else { return Err(Problem::new("[points] is missing")) };
-    table.only(&["unit", "reading_unit", "up", "down", "file"])?;
-    let unit = unit_among(
-        &table,
-        "unit",
-        &[Dimension::Mass, Dimension::Force, Dimension::Pressure],
-        "unit = \"kg\" for weights, or \"N\" for forces",
-    )?;
-    let reading_unit = unit_among(
-        &table,
-        "reading_unit",
-        &[
-            Dimension::Count,
-            Dimension::Voltage,
-            Dimension::VoltageRatio,
-            Dimension::Force,
-            Dimension::Mass,
-            Dimension::Pressure,
-        ],
-        "reading_unit = \"count\"",
-    )?;
-    let listed = listed(&table, files)?;
-    let weights = weights(root, unit, &gravity)?;
-    let degree = match root.table("fit")? {
-        Some(fit) => {
-            fit.only(&["degree"])?;
-            let degree = fit.counting("degree")?;
-            if let Some(found) = &degree
-                && found.value > 3
-            {
-                let problem = Problem::new(format!("fit.degree is {}", found.value))
-                    .expected("1, 2 or 3")
-                    .remedy("write degree = 1");
-                return Err(fit.problem_at(&found.span, problem));
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::calibration::{ErrorShape, ScaleSource};
+
+    const POINTS: &str =
+        "[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 10.0], [5, 510.0], [10, 1011.0]]\n";
+
+    fn read(text: &str) -> Result<Calibrated, Problem> {
+        load_text(Path::new("bench/cell.toml"), text, &SiteSpec::default(), None)
+    }
+
+    fn unit(symbol: &str) -> Option<Unit> {
+        quantity::find(symbol)
+    }
+
+    #[test]
+    fn a_full_file_by_points() {
+        let text = "[cell]\nname = \"2 kN S-beam\"\ncapacity = \"2 kN\"\ndate = \"2026-04-02\"\n[site]\nlatitude = \"44.7 deg\"\n\
+            height = \"310 m\"\n[weights]\ndensity = \"7850 kg/m3\"\ntolerance = \"0.05 %\"\nerrors = \"each\"\n[points]\nunit = \"kg\"\n\
+            reading_unit = \"count\"\nup = [[0, 8123.4], [5, 52311.0], [10, 96490.2]]\ndown = [[10, 96502.0], [5, 52330.5], [0, 8125.1]]\n\
+            [fit]\ndegree = 1\n";
+        let found = read(text).unwrap_or_else(|problem| panic!("{problem}"));
+        assert_eq!(found.calibration.name, "2 kN S-beam");
+        assert_eq!(found.calibration.capacity_n, Some(2000.0));
+        assert_eq!(found.calibration.cautions, Vec::<String>::new());
+        assert!(found.report.hysteresis_percent.is_some() && found.report.weights_covariance.is_some());
+        let sources: std::collections::BTreeSet<_> =
+            found.calibration.errors.iter().flatten().map(|error| error.source).collect();
+        for source in [
+            ScaleSource::Fit,
+            ScaleSource::Weights,
+            ScaleSource::Gravity,
+            ScaleSource::Buoyancy,
+            ScaleSource::Extrapolation,
+        ] {
+            assert!(sources.contains(&source), "{source:?}");
+        }
+        let json = serde_json::to_value(&found.report).unwrap();
+        for key in [
+            "degree",
+            "coefficients",
+            "covariance",
+            "residual_standard_deviation",
+            "reading_unit",
+            "nonlinearity_percent",
+            "hysteresis_percent",
+            "repeatability_percent",
+            "range_n",
+            "points",
+        ] {
+            assert!(json.get(key).is_some(), "{key}");
+        }
+        assert!(json["repeatability_percent"].is_null());
+    }
+
+    /// Two points say nothing of scatter: no covariance, a caution, and what the weights do is still known.
+    #[test]
+    fn two_points_claim_no_scatter() {
+        let two = "[points]\nunit = \"kg\"\nreading_unit = \"mV\"\nup = [[0, 0.1], [10, 5.3]]\n";
+        let bare = read(two).unwrap();
+        assert_eq!(bare.calibration.errors, None);
+        assert_eq!((&bare.report.covariance, bare.report.residual_standard_deviation), (&None, None));
+        assert!(bare.calibration.cautions.iter().any(|caution| caution.contains("as many coefficients")));
+        let stated = read(&format!("[weights]\ntolerance = \"5 g\"\n{two}")).unwrap();
+        let errors = stated.calibration.errors.as_ref().unwrap();
+        assert!(errors.iter().all(|error| error.source != ScaleSource::Fit));
+        let weights = errors.iter().find(|error| error.source == ScaleSource::Weights).unwrap();
+        let top = stated.calibration.range_n.unwrap()[1];
+        // 5 g of 10 kg, rectangular
+        let expected = top * 5e-4 / 3f64.sqrt();
+        let found = stated.calibration.force_error_n(weights, top).abs();
+        assert!((found / expected - 1.0).abs() < 1e-3, "{found} {expected}");
+    }
+
+    /// A shared error is invisible in scatter: without its tolerance the scale's error is not known.
+    #[test]
+    fn a_shared_error_without_tolerance_is_unknown() {
+        assert!(read(POINTS).unwrap().calibration.errors.is_some());
+        assert_eq!(read(&format!("[weights]\nerrors = \"common\"\n{POINTS}")).unwrap().calibration.errors, None);
+        let common = read(&format!("[weights]\nerrors = \"common\"\ntolerance = \"0.3 %\"\n{POINTS}")).unwrap();
+        let errors = common.calibration.errors.unwrap();
+        let weights: Vec<_> = errors.iter().filter(|error| error.source == ScaleSource::Weights).collect();
+        assert_eq!(weights.len(), 1);
+        assert_eq!(weights[0].shape, ErrorShape::Relative(0.003 / 3f64.sqrt()));
+    }
+
+    #[test]
+    fn readings_in_another_unit_are_converted_or_refused() {
+        let text = POINTS.replace("count", "mV");
+        let volts = load_text(Path::new("c.toml"), &text, &SiteSpec::default(), unit("V")).unwrap().calibration;
+        let millivolts = read(&text).unwrap().calibration;
+        assert!((volts.force_n(0.5).unwrap() - millivolts.force_n(500.0).unwrap()).abs() < 1e-9);
+        let problem = load_text(Path::new("c.toml"), POINTS, &SiteSpec::default(), unit("mV")).unwrap_err();
+        assert!(problem.found.contains("mV") && problem.found.contains("count"));
+        assert_eq!(problem.file.as_deref(), Some(Path::new("c.toml")));
+    }
+
+    #[test]
+    fn constants_and_rating() {
+        let line = read("[constants]\nslope = \"0.000113 N/count\"\nslope_uncertainty = \"0.3 %\"\nzero = 8123\n")
+            .unwrap()
+            .calibration;
+        assert!((line.force_n(8123.0 + 1e6).unwrap() - 113.0).abs() < 1e-9);
+        assert!((line.force_uncertainty_n(100.0).unwrap() - 0.3 / 3f64.sqrt()).abs() < 1e-12);
+        assert_eq!(read("[constants]\nslope = \"0.000113 N/count\"\n").unwrap().calibration.errors, None);
+        let sheet = "[cell]\ncapacity = \"2 kN\"\n[rating]\nrated_output = \"2.0 mV/V\"\nexcitation = \"5 V\"\naccuracy = \"0.25 %\"\n";
+        let millivolts = load_text(Path::new("c.toml"), sheet, &SiteSpec::default(), unit("mV")).unwrap().calibration;
+        assert!((millivolts.force_n(10.0).unwrap() - 2000.0).abs() < 1e-9);
+        let problem = load_text(Path::new("c.toml"), sheet, &SiteSpec::default(), unit("count")).unwrap_err();
+        assert!(problem.to_string().contains("adc_bits"), "{problem}");
+    }
+
+    #[test]
+    fn refusals_have_a_line_and_a_remedy() {
+        let with = |extra: &str| format!("{POINTS}{extra}");
+        let cases: Vec<(String, u64, &str)> = vec![
+            ("[cell]\nname = \"x\"\n".into(), 1, "none of [points]"),
+            (with("[constants]\nslope = \"1 N/V\"\n"), 5, "exactly one"),
+            (with("[fit]\ndegree = 4\n"), 6, "1, 2 or 3"),
+            (with("[fit]\ndegree = 3\n"), 1, "distinct loads"),
+            (with("[weights]\ntolerance = 0.5 \nmasses = 3\n"), 7, "tolerance"),
+            (with("[weights]\nerrors = \"eech\"\n"), 6, "each"),
+            (with("[weights]\ndensity = \"7.85 kg/m3\"\n"), 6, "7850"),
+            (with("[weights]\ntolerance = \"1 s\"\n"), 6, "a plain ratio"),
+            (POINTS.replace("\"kg\"", "\"V\""), 2, "voltage"),
+            (POINTS.replace("\"count\"", "\"kounts\""), 3, "count"),
+            (POINTS.replace("[5, 510.0]", "[5]"), 4, "pair"),
+            (POINTS.replace("[5, 510.0]", "[5, nan]"), 4, "pair"),
+            ("[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 1], [0, 1.1]]\n".into(), 1, "distinct"),
+            ("[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 7], [5, 7]]\n".into(), 1, "do not change"),
+            ("[points]\nunit = \"kg\"\nreading_unit = \"count\"\nup = [[0, 7]]\n".into(), 1, "at least two"),
+            ("[points]\nunit = \"kg\"\nup = [[0, 7]]\n".into(), 1, "reading_unit"),
+            ("[constants]\nslope = 0.1\n".into(), 2, "N/count"),
+            ("[constants]\nslope = \"5 N\"\n".into(), 2, "a force per count"),
+            ("[constants]\nslope = \"5 ± 1 N/V\"\nslope_uncertainty = \"1 %\"\n".into(), 3, "twice"),
+            ("[constants]\nslope = \"5 N/V\"\nslope_uncertainty = \"1 ± 0.1 %\"\n".into(), 3, "half-width"),
+            (with("[weights]\ntolerance = \"5 ± 1 g\"\n"), 6, "half-width"),
+            ("[constants]\nslop = \"5 N/V\"\n".into(), 2, "slope"),
+            ("[rating]\nrated_output = \"2 mV/V\"\n".into(), 1, "capacity"),
+            ("[rating]\nexcitation = \"2 V\"\n[cell]\ncapacity = \"2 kN\"\n".into(), 1, "rated_output"),
+        ];
+        for (text, line, part) in cases {
+            let problem = read(&text).expect_err(&text);
+            let message = problem.to_string();
+            assert_eq!(problem.line, Some(line), "{text}\n{message}");
+            assert!(message.contains(part), "{text}\n{message}");
+        }
+    }
+
+    proptest::proptest! {
+        #[test]
+        fn never_panics(cut in 0usize..400, junk in "\\PC{0,12}") {
+            let at = cut.min(POINTS.len());
+            let _ = read(&format!("{}{junk}{}", &POINTS[..at], &POINTS[at..]));
+        }
+
+        #[test]
+        fn any_points_are_fitted_or_refused(points in proptest::collection::vec((proptest::num::f64::ANY, proptest::num::f64::ANY), 0..8)) {
+            let list: Vec<String> = points.iter().map(|(load, reading)| format!("[{load:e}, {reading:e}]").replace("NaN", "nan")).collect();
+            let text = format!("[points]\nunit = \"N\"\nreading_unit = \"mV\"\nup = [{}]\n", list.join(", "));
+            if let Ok(found) = read(&text) {
+                let _ = found.calibration.force_n(1.0);
+                let _ = found.calibration.force_uncertainty_n(1.0);
             }
-            degree.map(|found| found.value)
-        }
-        None => None,
-    };
-    let measures = if unit.dimension == Dimension::Pressure { Dimension::Pressure } else { Dimension::Force };
-    let points = Points {
-        name: cell.name.clone(),
-        capacity_n: capacity_of(cell, measures),
-        listed,
-        unit,
-        reading_unit,
-        gravity,
-        density_kg_m3: weights.density_kg_m3,
-        tolerance: weights.tolerance,
-        weight_errors: weights.errors,
-        weight_errors_stated: weights.errors_stated,
-        degree,
-    };
-    points::calibrate(&points).map_err(|problem| table.problem(problem))
-}
-
-fn unit_among(table: &Table<'_>, key: &str, dimensions: &[Dimension], remedy: &str) -> Result<Unit, Problem> {
-    let allowed: Vec<&str> =
-        quantity::all().iter().filter(|unit| dimensions.contains(&unit.dimension)).map(|unit| unit.symbol).collect();
-    let expected = format!("one of: {}", allowed.join(", "));
-    let Some(found) = table.text(key)? else {
-        return Err(table.missing(key, &expected, &format!("write {remedy} under [{}]", table.name)));
-    };
-    match quantity::find(&found.value) {
-        Some(unit) if dimensions.contains(&unit.dimension) => Ok(unit),
-        Some(unit) => {
-            let problem = Problem::new(format!("{} is {}, {}", table.full(key), unit.symbol, unit.dimension.words()));
-            Err(table.problem_at(&found.span, problem.expected(expected).remedy(format!("write {remedy}"))))
-        }
-        None => Err(table.problem_at(&found.span, quantity::unknown_unit(&found.value, None).expected(expected))),
-    }
-}
-
-fn listed(table: &Table<'_>, files: &mut Vec<PathBuf>) -> Result<Vec<Listed>, Problem> {
-    let mut listed = Vec::new();
-    for (key, rising) in [("up", true), ("down", false)] {
-        for found in table.pairs(key)?.unwrap_or_default() {
-            let [load, reading] = found.value;
-            listed.push(Listed { load, reading, rising });
         }
     }
-    match table.text("file")? {
-        Some(file) if listed.is_empty() => {
-            let path = table.document().resolve(&file.value);
-            listed = table::read(&Document::read(&path)?)?;
-            files.push(path);
-        }
-        Some(file) => {
-            let problem = Problem::new("[points] holds points and names a file of them")
-                .expected("one of the two")
-                .remedy("remove file, or up and down");
-            return Err(table.problem_at(&file.span, problem));
-        }
-        None => {}
-    }
-    if listed.len() < 2 {
-        return Err(table.problem(
-            Problem::new(format!("[points] holds {} point(s)", listed.len()))
-                .expected("at least two loads with their readings")
-                .remedy("write up = [[0, 8123.4], [5, 52311.0], [10, 96490.2]]: load, reading"),
-        ));
-    }
-    Ok(listed)
-}
-
-struct Weights {
-    density_kg_m3: f64,
-    tolerance: Option<Tolerance>,
-    errors: WeightErrors,
-    errors_stated: bool,
-}
-
-fn weights(root: &Table<'_>, unit: Unit, gravity: &Gravity) -> Result<Weights, Problem> {
-    let mut weights = Weights {
-        density_kg_m3: CONVENTIONAL_DENSITY_KG_M3,
-        tolerance: None,
-        errors: WeightErrors::Each,
-        errors_stated: false,
-    };
-    let Some(table) = root.table("weights")? else { return Ok(weights) };
-    table.only(&["density", "tolerance", "errors"])?;
-    if let Some(density) = table.positive("density", Dimension::Density)? {
-        if density.value < 500.0 || density.value > 25000.0 {
-            let problem = Problem::new(format!("weights.density is {} kg/m3", density.value))
-                .expected("the density of a solid weight, 500 to 25000 kg/m3")
-                .remedy("write density = \"7850 kg/m3\" for steel, or leave it out for conventional masses");
-            return Err(table.problem_with("density", problem));
-        }
-        weights.density_kg_m3 = density.value;
-    }
-    let kinds = match unit.dimension {
-        Dimension::Mass => vec![Dimension::Ratio, Dimension::Mass, Dimension::Force],
-        other => vec![Dimension::Ratio, other],
-    };
-    if let Some(found) = table.quantity_among("tolerance", &kinds)? {
-        let (measured, written) = found.value;
-        let negative = measured.value < 0.0;
-        if negative || written.dimension == Dimension::Ratio && measured.value >= 1.0 {
-            let problem = Problem::new("weights.tolerance is out of range")
-                .expected("limits of a weight's error, from 0 up")
-                .remedy("write tolerance = \"0.05 %\", or \"0.5 g\"");
-            return Err(table.problem_at(&found.span, problem));
-        }
-        let in_air = gravity.value_m_s2 * (1.0 - AIR_DENSITY_KG_M3 / weights.density_kg_m3);
-        let scaled = |factor: f64| Measured {
-            value: measured.value * factor,
-            standard_uncertainty: measured.standard_uncertainty.map(|standard| standard * factor),
-            limits: measured.limits.map(|limits| limits * factor),
-        };
-        weights.tolerance = Some(match written.dimension {
-            Dimension::Ratio => Tolerance::Relative(measured),
-            Dimension::Mass => Tolerance::ForceN(scaled(in_air)),
-            _ => Tolerance::ForceN(measured),
-        });
-    }
-    let words = [("each", WeightErrors::Each), ("stack", WeightErrors::Stack), ("common", WeightErrors::Common)];
-    if let Some(errors) = table.word("errors", &words)? {
-        weights.errors = errors;
-        weights.errors_stated = errors != WeightErrors::Each;
-    }
-    Ok(weights)
 }

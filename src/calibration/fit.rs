@@ -63,6 +63,12 @@ impl Fit {
         (self.dof > 0).then(|| self.rss / self.dof as f64)
     }
 
+    /// Variance of the fitted reading at a force for readings of unit variance: x'(X'X)⁻¹x.
+    pub fn leverage(&self, force_n: f64) -> f64 {
+        let powers = DVector::from_fn(self.scaled.len(), |power, _| (force_n / self.scale_n).powi(power as i32));
+        (powers.transpose() * &self.inverse * &powers)[(0, 0)]
+    }
+
     /// Covariance of the coefficients of the force in newtons for a given variance of the readings.
     pub fn covariance(&self, variance: f64) -> Vec<Vec<f64>> {
         unscale_matrix(&(&self.inverse * variance), self.scale_n)

@@ -3,8 +3,10 @@
 mod curve;
 mod degree;
 mod file;
+mod file_points;
 mod fit;
 mod forms;
+mod noise;
 mod points;
 mod report;
 mod table;

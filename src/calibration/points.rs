@@ -2,6 +2,7 @@
 
 use super::degree::{self, Choice, Evidence};
 use super::fit::{self, Fit, monotonic_within, slope, unscale_matrix, value};
+use super::noise::noise_variance;
 use super::report::{CalibrationPoint, CalibrationReport, quality};
 use super::weights::{self, Tolerance, WeightErrors, levels};
 use super::{Calibrated, Calibration, ErrorDirection, ErrorShape, ScaleSource};
@@ -70,7 +71,7 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
     let coefficients = choice.fit.coefficients();
     let span = (value(&coefficients, high) - value(&coefficients, low)).abs();
     let largest = readings.iter().fold(0.0f64, |largest, reading| largest.max(reading.abs()));
-    if !(span > 1e-12 * largest) || !coefficients.iter().all(|coefficient| coefficient.is_finite()) {
+    if span <= 1e-12 * largest || !span.is_finite() || !coefficients.iter().all(|coefficient| coefficient.is_finite()) {
         return Err(Problem::new("the readings do not change with the load")
             .expected("readings that follow the weights")
             .remedy("check the columns of the points and their unit"));
@@ -96,8 +97,8 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
     };
     let mut errors = Vec::new();
     if let Some(noise) = noise {
-        if noise.variance > 0.0 {
-            push_directions(&mut errors, ScaleSource::Fit, &(&choice.fit.inverse * noise.variance), &choice.fit);
+        if noise > 0.0 {
+            push_directions(&mut errors, ScaleSource::Fit, &(&choice.fit.inverse * noise), &choice.fit);
         } else {
             calibration.findings.push(
                 "the points scatter no more than the weights' tolerance makes them: nothing is added for scatter"
@@ -105,9 +106,15 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
             );
         }
     }
+    if let Some(suspected) = &choice.suspected {
+        calibration
+            .findings
+            .push("curvature is suspected but not established: it counts as an error of the curve".into());
+        errors.push(ErrorDirection { source: ScaleSource::Fit, shape: ErrorShape::Coefficients(suspected.clone()) });
+    }
     match (&points.tolerance, points.weight_errors) {
         (Some(Tolerance::Relative(relative)), WeightErrors::Common) => {
-            let size = relative.standard_uncertainty.unwrap_or(relative.value / 3f64.sqrt());
+            let size = relative / 3f64.sqrt();
             errors.push(ErrorDirection { source: ScaleSource::Weights, shape: ErrorShape::Relative(size) });
         }
         _ => push_directions(&mut errors, ScaleSource::Weights, &gram(&changes, choice.degree + 1), &choice.fit),
@@ -159,7 +166,7 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
         weights_covariance: points
             .tolerance
             .map(|_| unscale_matrix(&gram(&changes, choice.degree + 1), choice.fit.scale_n)),
-        noise_standard_deviation: noise.map(|noise| noise.variance.sqrt()),
+        noise_standard_deviation: noise.map(f64::sqrt),
         reading_unit: points.reading_unit.symbol.to_string(),
         nonlinearity_percent: found.nonlinearity_percent,
         hysteresis_percent: found.hysteresis_percent,
@@ -187,7 +194,7 @@ fn chosen(points: &Points, evidence: Evidence<'_>, distinct: &[f64]) -> Result<C
                 return Err(too_few(degree));
             }
             let fit = fit::fit(evidence.forces_n, evidence.readings, degree).ok_or_else(|| too_few(degree))?;
-            Ok(Choice { degree, fit, reason: format!("degree {degree}, as asked for under [fit]") })
+            Ok(Choice { degree, fit, reason: format!("degree {degree}, as asked for under [fit]"), suspected: None })
         }
     }
 }
@@ -213,56 +220,6 @@ fn coefficient_changes(choice: &Choice, evidence: Evidence<'_>) -> Vec<DVector<f
 /// Covariance that independent changes of one standard uncertainty each add up to.
 fn gram(changes: &[DVector<f64>], terms: usize) -> DMatrix<f64> {
     changes.iter().fold(DMatrix::zeros(terms, terms), |sum, change| sum + change * change.transpose())
-}
-
-#[derive(Debug, Clone, Copy)]
-struct Noise {
-    variance: f64,
-}
-
-/// Variance of the readings beyond what the weights make; `None` without degrees of freedom.
-///
-/// The residuals hold the errors of the weights too, and those are counted by themselves. So what they are expected to
-/// leave in the sum of squares is taken out of it before it is divided by the degrees of freedom. Where a load was
-/// repeated, the scatter of its own readings, which no weight's error enters, is the least it can be. Without a stated
-/// tolerance all scatter is kept, and the same weight's error in repeated readings is not allowed to average out: the
-/// scatter of the loads' means about the curve counts, when it is the larger.
-fn noise_variance(fit: &Fit, evidence: Evidence<'_>) -> Option<Noise> {
-    let all = fit.residual_variance()?;
-    let terms = fit.scaled.len();
-    let (distinct, places) = levels(evidence.forces_n);
-    let mut sums = vec![(0.0f64, 0.0f64); distinct.len()];
-    for (place, reading) in places.iter().zip(evidence.readings) {
-        sums[*place].0 += reading;
-        sums[*place].1 += 1.0;
-    }
-    let within: f64 = places
-        .iter()
-        .zip(evidence.readings)
-        .map(|(place, reading)| (reading - sums[*place].0 / sums[*place].1).powi(2))
-        .sum();
-    let within_dof = evidence.readings.len() - distinct.len();
-    let repeated = if within_dof >= 2 { within / within_dof as f64 } else { 0.0 };
-    if evidence.weight_errors.is_empty() {
-        let lack_dof = distinct.len().saturating_sub(terms);
-        let lack = if lack_dof >= 2 && within_dof > 0 { (fit.rss - within).max(0.0) / lack_dof as f64 } else { 0.0 };
-        return Some(Noise { variance: all.max(lack) });
-    }
-    let coefficients = fit.coefficients();
-    let expected: f64 = evidence
-        .weight_errors
-        .iter()
-        .filter_map(|shift| {
-            let moved: Vec<f64> = evidence
-                .forces_n
-                .iter()
-                .zip(shift)
-                .map(|(force, shift)| slope(&coefficients, *force) * shift)
-                .collect();
-            fit::fit(evidence.forces_n, &moved, terms - 1).map(|left| left.rss)
-        })
-        .sum();
-    Some(Noise { variance: ((fit.rss - expected) / fit.dof as f64).max(repeated).max(0.0) })
 }
 
 /// Independent directions of a covariance in the scaled coefficients: its eigenvectors, each one standard uncertainty long.

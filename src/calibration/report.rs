@@ -79,7 +79,7 @@ pub(super) fn quality(forces_n: &[f64], readings: &[f64], rising: &[bool]) -> Qu
         return Quality::default();
     };
     let span = (last - first).abs();
-    if !(span > 0.0) {
+    if span.is_nan() || span <= 0.0 {
         return Quality::default();
     }
     let percent = |departures: Vec<f64>| departures.into_iter().reduce(f64::max).map(|largest| 100.0 * largest / span);

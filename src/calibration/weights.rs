@@ -1,7 +1,5 @@
 //! Dead weights to forces, and how the weights' own errors move them.
 
-use crate::quantity::Measured;
-
 /// Density of the air weights are adjusted in by convention, kg/m3 (OIML D 28).
 pub(super) const AIR_DENSITY_KG_M3: f64 = 1.2;
 /// Limits of the air's density about that, as a fraction: weather and heights to about a kilometre (from memory).
@@ -17,22 +15,21 @@ pub(super) enum WeightErrors {
     Common,
 }
 
-/// Limits of a weight's error: of its mass, or in newtons.
+/// Half-width of the limits of a weight's error: as a fraction of its mass, or in newtons.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) enum Tolerance {
-    Relative(Measured),
-    ForceN(Measured),
+    Relative(f64),
+    ForceN(f64),
 }
 
 impl Tolerance {
     /// Standard uncertainty of one piece that pulls with this force, N. A piece that is not there has no error.
     fn standard_n(&self, piece_n: f64) -> f64 {
-        // a stated tolerance is limits even without the sign ±
-        let standard = |measured: &Measured| measured.standard_uncertainty.unwrap_or(measured.value / 3f64.sqrt());
+        // rectangular limits: JCGM 100:2008, 4.3.7
         match self {
-            Tolerance::Relative(relative) => standard(relative) * piece_n.abs(),
+            Tolerance::Relative(relative) => relative / 3f64.sqrt() * piece_n.abs(),
             Tolerance::ForceN(_) if piece_n == 0.0 => 0.0,
-            Tolerance::ForceN(force) => standard(force),
+            Tolerance::ForceN(force) => force / 3f64.sqrt(),
         }
     }
 }
@@ -96,8 +93,7 @@ pub(super) fn independent_errors(forces_n: &[f64], tolerance: &Tolerance, errors
 mod tests {
     use super::*;
 
-    const TOLERANCE: Tolerance =
-        Tolerance::Relative(Measured { value: 0.0005, standard_uncertainty: None, limits: None });
+    const TOLERANCE: Tolerance = Tolerance::Relative(0.0005);
 
     #[test]
     fn each_weight_errs_alike_up_and_down() {

@@ -104,20 +104,11 @@ fn log_spec(table: &Table<'_>) -> Result<LogSpec, Problem> {
         }
         None => None,
     };
-    let clock_tolerance = table.quantity("clock_tolerance", Dimension::Ratio)?;
-    if let Some(found) = &clock_tolerance
-        && !(0.0..0.5).contains(&found.value.value)
-    {
-        let problem = Problem::new(format!("log.clock_tolerance is {} %", found.value.value * 100.0))
-            .expected("the limits of the logger's clock error, 0 to 50 %")
-            .remedy("write clock_tolerance = \"0.5 %\"");
-        return Err(table.problem_at(&found.span, problem));
-    }
     Ok(LogSpec {
         file: table.document().resolve(&file.value),
         time,
         rate_hz: table.positive("rate", Dimension::Frequency)?,
-        clock_tolerance: clock_tolerance.map(|found| found.value),
+        clock_tolerance: table.limits("clock_tolerance")?.map(|found| Measured::of(found.value)),
         averaging_s: table.positive("averaging", Dimension::Time)?.map(|found| found.value),
     })
 }
@@ -198,21 +189,13 @@ fn channel(table: &Table<'_>) -> Result<ChannelSpec, Problem> {
             "write reference = \"gauge\" in this [[channel]]",
         ));
     }
-    let accuracy = table.quantity("accuracy", Dimension::Ratio)?;
-    if let Some(found) = &accuracy
-        && !(0.0..1.0).contains(&found.value.value)
-    {
-        let problem = Problem::new(format!("accuracy is {} %", found.value.value * 100.0))
-            .expected("limits of the reading's error, 0 to 100 %")
-            .remedy("write accuracy = \"0.2 %\"");
-        return Err(table.problem_at(&found.span, problem));
-    }
+    let accuracy = table.limits("accuracy")?;
     Ok(ChannelSpec {
         role,
         column,
         unit,
         calibration: calibration.map(|file| table.document().resolve(&file.value)),
-        accuracy: accuracy.map(|found| found.value.value),
+        accuracy: accuracy.map(|found| found.value),
         reference,
         line: Some(table.line()),
     })
