@@ -224,7 +224,9 @@ fn runs_like_a_clock(layout: &Layout) -> Result<Option<TimeColumn>, Problem> {
         if at(0.9) > 3.0 * at(0.1) {
             continue;
         }
-        if at(0.0) == 1.0 && at(1.0) == 1.0 && backward == 0 && steps.len() == total {
+        let by_one = steps.iter().filter(|step| **step == 1.0).count();
+        let counts = at(0.0) == 1.0 && by_one * 10 >= total * 9;
+        if counts || time_name(&layout.header.names[index]) == TimeName::Counter {
             return Err(Problem::new(format!(
                 "`{}` counts up by one: sample numbers, or milliseconds at 1 kHz; the log does not say which",
                 layout.header.names[index]

@@ -191,8 +191,16 @@ fn starts_astray(walk: &Walk<'_>, index: usize, restart: Option<usize>) -> bool 
     let steps = [1, 2].map(|ahead| walk.raw[index + ahead + 1] - walk.raw[index + ahead]);
     let follows_well = steps.iter().all(|step| (0.0..=FAR * walk.step).contains(step));
     let first = walk.raw[index + 1] - walk.raw[index];
-    let far = first < 0.0 && walk.rollover(index + 1, walk.raw[index]).is_none() || first > 1000.0 * walk.step;
+    let far = first < 0.0 && walk.rollover(index + 1, walk.raw[index]).is_none() || first > 1000.0 * walk.step
+        // A capture that began in the middle of a line lacks the leading digits of its first stamp.
+        || first > FAR * walk.step && whole_digits(walk.raw[index]) < whole_digits(walk.raw[index + 1]);
     follows_well && far
+}
+
+/// Digits before the decimal mark.
+fn whole_digits(value: f64) -> u32 {
+    let whole = value.abs().floor();
+    if whole < 1.0 { 0 } else { whole.log10().floor() as u32 + 1 }
 }
 
 /// Stamps that stand off the middle of their neighbours in a clock that is otherwise even; gives them the middle.
