@@ -213,7 +213,7 @@ fn runs_like_a_clock(layout: &Layout) -> Result<Option<TimeColumn>, Problem> {
         }
         let mut steps: Vec<f64> = sample.windows(2).map(|pair| pair[1] - pair[0]).collect();
         let total = steps.len();
-        let backward = steps.iter().filter(|step| !(**step >= 0.0)).count();
+        let backward = steps.iter().filter(|step| step.is_nan() || **step < 0.0).count();
         steps.retain(|step| *step > 0.0);
         if backward * 50 > total || steps.is_empty() {
             continue;
@@ -250,7 +250,7 @@ pub fn infer_unit(first: f64, step: f64, span: f64, whole: bool) -> Option<(&'st
             return Some((symbol, factor, "the stamps count from 1970"));
         }
     }
-    if !(step > 0.0) {
+    if step.is_nan() || step <= 0.0 {
         return None;
     }
     // Firings are logged at some 5 Hz to 100 kHz, and for less than two hours.

@@ -1,5 +1,7 @@
 //! Stamps that repeat: a coarse clock, whose samples are spread, told from records written twice, which are dropped.
 
+use super::stamps::sampled_steps;
+
 /// What became of repeated stamps.
 #[derive(Debug, Default, PartialEq)]
 pub struct Repeats {
@@ -90,15 +92,15 @@ fn spread_locally(stamps: &[f64], step: f64) -> Vec<f64> {
             // Cut at its start: its samples end where the next stamp begins.
             (None, Some((stamp, neighbour))) if stamp - stamps[start] <= 1.6 * step && neighbour > length => {
                 let spacing = step / neighbour as f64;
-                for index in start..end {
-                    out[index] = stamp - (end - index) as f64 * spacing;
+                for (left, stamp_of) in (1..=length).rev().zip(&mut out[start..end]) {
+                    *stamp_of = stamp - left as f64 * spacing;
                 }
             }
             (previous, next) => {
                 let span = next.map_or(step, |(stamp, _)| (stamp - stamps[start]).min(step * 1.6));
                 let divisor = if next.is_none() { length.max(previous.unwrap_or(0)) } else { length };
-                for index in start..end {
-                    out[index] = stamps[start] + span * (index - start) as f64 / divisor as f64;
+                for (place, stamp_of) in out[start..end].iter_mut().enumerate() {
+                    *stamp_of = stamps[start] + span * place as f64 / divisor as f64;
                 }
             }
         }
@@ -142,7 +144,7 @@ fn straight(stamps: &[f64], places: &[f64], tick: f64) -> Option<Vec<f64>> {
         square += (place - mean_place).powi(2);
     }
     let slope = cross / square;
-    if !(slope > 0.0) {
+    if slope.is_nan() || slope <= 0.0 {
         return None;
     }
     let (mut low, mut high) = (f64::INFINITY, f64::NEG_INFINITY);
@@ -159,9 +161,8 @@ fn straight(stamps: &[f64], places: &[f64], tick: f64) -> Option<Vec<f64>> {
 
 /// The grid the stamps stand on, where it is coarse against the steps; 0 where it is fine or does not show.
 pub fn clock_grid(time: &[f64], step: f64) -> f64 {
-    let stride = (time.len() / 2000).max(1);
-    let mut steps: Vec<f64> = (1..time.len()).step_by(stride).map(|index| time[index] - time[index - 1]).collect();
-    let repeats = steps.iter().any(|value| *value == 0.0);
+    let mut steps = sampled_steps(time, 5000);
+    let repeats = steps.contains(&0.0);
     steps.retain(|value| *value > 0.0 && *value < 20.0 * step);
     if steps.len() < 4 {
         return 0.0;

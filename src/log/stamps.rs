@@ -34,9 +34,31 @@ pub fn moduli(unit_s: f64, clock: bool) -> Vec<f64> {
     all
 }
 
+/// Steps between neighbours: all of them, or those of evenly placed blocks where there are more than `at_most`. Blocks, because
+/// single steps at even distances would miss a pattern such as 12, 13, 12, 13.
+pub fn sampled_steps(stamps: &[f64], at_most: usize) -> Vec<f64> {
+    let steps = |part: &[f64]| part.windows(2).map(|pair| pair[1] - pair[0]).collect::<Vec<f64>>();
+    if stamps.len() <= at_most.max(100) {
+        return steps(stamps);
+    }
+    const BLOCKS: usize = 50;
+    let length = at_most / BLOCKS + 2;
+    (0..BLOCKS).flat_map(|block| steps(&stamps[block * (stamps.len() - length) / (BLOCKS - 1)..][..length])).collect()
+}
+
+/// Steps enough for a median.
+pub const MANY_STEPS: usize = 100_000;
+
 /// The usual step: median of those that go forward; `None` if none does.
 pub fn usual_step(stamps: &[f64]) -> Option<f64> {
-    let mut steps: Vec<f64> = stamps.windows(2).map(|pair| pair[1] - pair[0]).filter(|step| *step > 0.0).collect();
+    let forward = |mut steps: Vec<f64>| {
+        steps.retain(|step| *step > 0.0);
+        steps
+    };
+    let mut steps = forward(sampled_steps(stamps, MANY_STEPS));
+    if steps.is_empty() {
+        steps = forward(sampled_steps(stamps, usize::MAX));
+    }
     if steps.is_empty() {
         return None;
     }
@@ -90,7 +112,7 @@ fn blame(p: f64, l: f64, x: f64, y: f64, step: f64) -> Option<Blame> {
     let current = (l - p - step).abs() + (y - l - 2.0 * step).abs();
     let order = (x - p - step).abs() + (l - x - step).abs() + (y - l - step).abs();
     let least = previous.min(current).min(order);
-    if !(least <= 3.0 * step) {
+    if least.is_nan() || least > 3.0 * step {
         return None;
     }
     if order <= least && x > p && y > l {
@@ -206,7 +228,8 @@ fn whole_digits(value: f64) -> u32 {
 /// Stamps that stand off the middle of their neighbours in a clock that is otherwise even; gives them the middle.
 /// Returns their indices. `time` has no NaN and rises.
 pub fn even_out(time: &mut [f64], step: f64) -> Vec<usize> {
-    let mut deviations: Vec<f64> = time.windows(2).map(|pair| (pair[1] - pair[0] - step).abs()).collect();
+    let mut deviations = sampled_steps(time, MANY_STEPS);
+    deviations.iter_mut().for_each(|value| *value = (*value - step).abs());
     if deviations.len() < 8 {
         return Vec::new();
     }
