@@ -126,6 +126,18 @@ fn blame(p: f64, l: f64, x: f64, y: f64, step: f64) -> Option<Blame> {
     }
 }
 
+/// The same for the very last stamp: nothing follows that could decide.
+fn blame_at_end(p: f64, l: f64, x: f64, step: f64) -> Option<Blame> {
+    let near = |value: f64, steps: f64| (value - steps * step).abs() < 0.6 * step;
+    if near(x - p, 2.0) {
+        Some(Blame::Previous)
+    } else if near(x - p, 1.0) && near(l - x, 1.0) {
+        Some(Blame::Order)
+    } else {
+        None
+    }
+}
+
 /// Walks along the stamps. `restarts` are the indices behind repeated headers, ascending; `step` is the usual step.
 pub fn untangle(raw: &[f64], restarts: &[usize], moduli: &[f64], step: f64) -> Untangled {
     let mut out = Untangled { time: vec![f64::NAN; raw.len()], ..Untangled::default() };
@@ -163,6 +175,7 @@ pub fn untangle(raw: &[f64], restarts: &[usize], moduli: &[f64], step: f64) -> U
             let next = (index + 1 < raw.len()).then(|| walk.at(index + 1));
             let verdict = match (known, next) {
                 (Some(p), Some(y)) if !restarted => blame(p, l, x, y, step),
+                (Some(p), None) if !restarted => blame_at_end(p, l, x, step),
                 _ => None,
             };
             match verdict {
@@ -188,6 +201,10 @@ pub fn untangle(raw: &[f64], restarts: &[usize], moduli: &[f64], step: f64) -> U
                     if let Some(modulus) = walk.rollover(index, l) {
                         walk.offset += modulus;
                         out.rollovers.push((index, modulus));
+                    } else if next.is_none() && !restarted {
+                        // One stamp is too little to speak of a clock that began anew.
+                        out.bad.push(index);
+                        accept = false;
                     } else {
                         walk.offset = l + step - raw[index];
                         out.resets.push(index);
@@ -208,6 +225,10 @@ pub fn untangle(raw: &[f64], restarts: &[usize], moduli: &[f64], step: f64) -> U
 /// The very first stamp does not belong to what follows.
 fn starts_astray(walk: &Walk<'_>, index: usize, restart: Option<usize>) -> bool {
     if index + 3 >= walk.raw.len() || restart == Some(index + 1) || index > LOOK_AHEAD {
+        return false;
+    }
+    // The second stamp is to blame if the third stands where it should after the first.
+    if (walk.raw[index + 2] - walk.raw[index] - 2.0 * walk.step).abs() < 0.6 * walk.step {
         return false;
     }
     let steps = [1, 2].map(|ahead| walk.raw[index + ahead + 1] - walk.raw[index + ahead]);
