@@ -351,6 +351,65 @@ fn gaps_are_listed() {
 }
 
 #[test]
+fn stamps_on_a_grid_of_milliseconds_show_no_gaps() {
+    for rate in [80.0, 300.0, 700.0, 1000.0, 1300.0] {
+        for jitter in [0, 1] {
+            let mut text = "t_ms,load\n".to_owned();
+            for index in 0..2000 {
+                let late = if jitter == 1 { (index * 7919 % 5) as f64 * 0.15 } else { 0.0 };
+                text.push_str(&format!(
+                    "{},{}\n",
+                    (500.3 + index as f64 * 1000.0 / rate + late) as u64,
+                    reading(index)
+                ));
+            }
+            let log = log_of(&text);
+            assert_eq!(log.records.kept, 2000, "{rate} {:?}", log.repairs);
+            assert!(log.gaps.is_empty(), "{rate}: {:?}", log.gaps);
+            assert!((log.interval_s * rate - 1.0).abs() < 0.02, "{rate}: {}", log.interval_s);
+        }
+    }
+}
+
+#[test]
+fn units_of_time_without_a_name() {
+    for (scale, decimals) in [(1.0, 4), (1e3, 0), (1e3, 1), (1e6, 0)] {
+        for header in ["", "time,load,temp\n"] {
+            let mut text = header.to_owned();
+            for index in 0..200 {
+                text.push_str(&format!("{:.decimals$},{},21.5\n", index as f64 * 0.0125 * scale, reading(index)));
+            }
+            let log = log_of(&text);
+            assert!((log.time_s[199] - 199.0 * 0.0125).abs() < 0.001, "{scale} {decimals} {header}");
+            assert_eq!(log.columns.len(), 2);
+            assert!(log.findings.iter().any(|finding| finding.contains("inferred")), "{:?}", log.findings);
+        }
+    }
+    let mut text = "time [min],load\n".to_owned();
+    for index in 0..100 {
+        text.push_str(&format!("{:.7},{}\n", index as f64 * 0.0125 / 60.0, reading(index)));
+    }
+    assert!((log_of(&text).time_s[99] - 99.0 * 0.0125).abs() < 1e-4);
+}
+
+#[test]
+fn a_counter_without_a_name_is_not_taken_for_a_clock() {
+    let text: String = (0..60).map(|index| format!("{index},{}\n", reading(index))).collect();
+    let problem = read_bytes(text.as_bytes(), &ReadRequest::default()).unwrap_err();
+    assert!(problem.found.contains("counts up by one"), "{problem}");
+}
+
+#[test]
+fn readings_with_units_behind_them() {
+    let mut text = "Zeit s;Anzeige\n".to_owned();
+    for index in 0..60 {
+        text.push_str(&format!("{},{:02};{:+} kg\n", index / 10, index % 10 * 10, reading(index)));
+    }
+    let log = log_of(&text);
+    assert_eq!(log.columns[0].values[3], reading(3) as f64);
+}
+
+#[test]
 fn no_time_column() {
     let text: String = (0..50).map(|index| format!("{}\n", reading(index))).collect();
     let problem = read_bytes(text.as_bytes(), &ReadRequest::default()).unwrap_err();

@@ -230,7 +230,7 @@ fn settle(
     if repeats.coarse {
         resolution = step;
         let message = format!(
-            "the clock steps by {} s, more slowly than samples come; {} stamps spread evenly over its steps",
+            "the clock ticks by {} s, too coarsely for the rate of the samples; {} stamps spread evenly",
             step * unit_s,
             repeats.spread
         );
