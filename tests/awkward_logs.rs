@@ -407,6 +407,22 @@ fn readings_with_units_behind_them() {
     }
     let log = log_of(&text);
     assert_eq!(log.columns[0].values[3], reading(3) as f64);
+    assert_eq!(log.columns[0].unit.as_deref(), Some("kg"));
+}
+
+#[test]
+fn readings_with_labels_before_them() {
+    for (between, mark) in [(",", ":"), (" ", "="), ("\t", ": "), (", ", "=")] {
+        let mut text = "Load cell ready\n".to_owned();
+        for index in 0..60 {
+            text.push_str(&format!("t_ms{mark}{}{between}load{mark}{}\n", stamp_ms(index), reading(index)));
+        }
+        let log = log_of(&text);
+        assert_eq!(log.columns.len(), 1, "{text}");
+        assert_eq!(log.columns[0].name, "load");
+        assert_eq!(log.columns[0].values[3], reading(3) as f64);
+        assert!((log.time_s[59] - 0.737).abs() < 1e-9);
+    }
 }
 
 #[test]
@@ -485,7 +501,7 @@ fn a_very_long_line_is_dropped_and_counted() {
 
 #[test]
 fn real_hot_fire_log() {
-    let path = Path::new("/work/shared/real-logs/hotfire-2025-02-08.csv");
+    let path = Path::new(concat!(env!("CARGO_MANIFEST_DIR"), "/../shared/real-logs/hotfire-2025-02-08.csv"));
     let Ok(mut file) = std::fs::File::open(path) else {
         eprintln!("skipped: {} is not here", path.display());
         return;
@@ -493,7 +509,7 @@ fn real_hot_fire_log() {
     let request = ReadRequest { columns: vec![ColumnRef::Name("L_THRUST".to_owned())], ..ReadRequest::default() };
     let log = read(&mut file, path, &request).unwrap();
     consistent(&log);
-    eprintln!("{:?} {:?} {} {:?} {:?}", log.records, log.findings, log.interval_s, log.gaps, log.repairs);
+
     assert_eq!(log.columns[0].unit.as_deref(), Some("N"));
     assert!(log.findings.iter().any(|finding| finding.contains("`seconds`")), "{:?}", log.findings);
     assert_eq!(log.records.read, log.records.kept);

@@ -208,7 +208,8 @@ fn candidates(layout: &Layout) -> Vec<TimeColumn> {
 fn runs_like_a_clock(layout: &Layout) -> Result<Option<TimeColumn>, Problem> {
     for index in 0..layout.columns {
         let sample = &layout.samples[index];
-        if layout.kinds[index] != Kind::Number || sample.len() < 3 || layout.columns < 2 {
+        if !matches!(layout.kinds[index], Kind::Number | Kind::NumberWithUnit) || sample.len() < 3 || layout.columns < 2
+        {
             continue;
         }
         let mut steps: Vec<f64> = sample.windows(2).map(|pair| pair[1] - pair[0]).collect();

@@ -246,7 +246,8 @@ fn header_fields(line: &[u8], columns: usize, splitter: Splitter, indexed: bool)
         if way.delimiter == Delimiter::Spaces {
             fields = join_brackets(fields);
         }
-        let exact_only = attempt > 0 || commented.is_some();
+        // Any sentence has about as many words as a log has columns.
+        let exact_only = attempt > 0 || commented.is_some() || way.delimiter == Delimiter::Spaces && !indexed;
         if let Some(fields) = fit(fields, columns, exact_only, indexed) {
             let letters = |field: &String| field.chars().any(char::is_alphabetic) || is_unit(field);
             if fields.iter().any(letters) {
@@ -288,7 +289,8 @@ fn fit(mut fields: Vec<String>, columns: usize, exact_only: bool, indexed: bool)
     if exact_only || columns < 2 {
         return None;
     }
-    if fields.len() + 1 == columns {
+    // One field over two columns is a banner more often than a header.
+    if fields.len() + 1 == columns && (columns > 2 || indexed) {
         // Data with an index the header went without, or a last column without a name.
         if indexed {
             fields.insert(0, String::new());
