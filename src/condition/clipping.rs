@@ -36,6 +36,8 @@ const ROUGH_STEPS: f64 = 2.0;
 const AROUND: usize = 64;
 /// A thrust plateau wanders by at least this share of its height (common practice, no source).
 const WANDER: f64 = 1e-3;
+/// Share of the record's range that a limit lies away from the readings at rest.
+const AWAY_FROM_REST: f64 = 0.05;
 /// Share of the record's range above which a reading belongs to the burst.
 const IN_BURST: f64 = 0.3;
 
@@ -51,17 +53,18 @@ pub fn find_clipping(values: &[f64]) -> Vec<Clipping> {
 fn at_top(values: &[f64], sign: f64) -> Option<Clipping> {
     let value = |index: usize| sign * values[index];
     let limit = (0..values.len()).map(value).filter(|v| v.is_finite()).fold(f64::NEG_INFINITY, f64::max);
-    let mut finite: Vec<f64> = values.iter().copied().filter(|v| v.is_finite()).map(|v| sign * v).collect();
+    let finite: Vec<f64> = values.iter().copied().filter(|v| v.is_finite()).map(|v| sign * v).collect();
     if finite.len() < 8 {
         return None;
     }
-    let middle = finite.len() / 2;
-    let base = *finite.select_nth_unstable_by(middle, f64::total_cmp).1;
     let step = smallest_step(values);
     let lowest = finite.iter().copied().fold(f64::INFINITY, f64::min);
-    // Height above the usual level; where the burst fills the record, above the lowest reading.
-    let height = (limit - base).max(0.5 * (limit - lowest));
-    if !(height > 0.0 && step > 0.0) {
+    // The stand at rest repeats its reading for long, and may do so at another level after the burn. That is no limit: a limit
+    // lies well away from where the record starts and ends.
+    let ends = (finite.len() / 50).max(5);
+    let at_rest = median(&finite[..ends]).max(median(&finite[finite.len() - ends..]));
+    let height = limit - at_rest;
+    if !(height > AWAY_FROM_REST * (limit - lowest) && step > 0.0) {
         return None;
     }
     let exact = runs_above(values, sign, limit);
@@ -71,6 +74,12 @@ fn at_top(values: &[f64], sign: f64) -> Option<Clipping> {
     // The amplifier's own noise on its limit: a narrow band in place of one reading.
     let band = in_noise_band(values, sign, limit, step, height)?;
     Some(clipping(sign, limit, band))
+}
+
+fn median(values: &[f64]) -> f64 {
+    let mut sorted = values.to_vec();
+    sorted.sort_by(f64::total_cmp);
+    sorted.get(sorted.len() / 2).copied().unwrap_or(f64::NAN)
 }
 
 fn clipping(sign: f64, limit: f64, ranges: Vec<Range<usize>>) -> Clipping {
@@ -102,7 +111,7 @@ fn smallest_step(values: &[f64]) -> f64 {
 
 /// End codes of converters of the usual widths, one-sided and two-sided.
 fn is_end_code(value: f64) -> bool {
-    [8, 10, 12, 13, 14, 15, 16, 17, 18, 20, 23, 24, 31].iter().any(|&bits| {
+    [10, 12, 13, 14, 15, 16, 17, 18, 20, 23, 24, 31].iter().any(|&bits| {
         let full = f64::from(bits).exp2();
         value == full - 1.0 || value == -full
     })
@@ -110,16 +119,22 @@ fn is_end_code(value: f64) -> bool {
 
 fn judge(values: &[f64], sign: f64, limit: f64, runs: &[Range<usize>], step: f64, height: f64) -> Option<Clipping> {
     let longest = runs.iter().map(|run| run.len()).max()?;
-    if longest < SHORTEST_RUN || !enters_abruptly(values, sign, limit, runs, step) {
+    if longest < SHORTEST_RUN {
         return None;
     }
+    let abrupt = enters_abruptly(values, sign, limit, runs, step);
     let whole = values.iter().filter(|v| v.is_finite()).all(|v| v.fract() == 0.0);
-    let at_end_code = whole && is_end_code(sign * limit);
+    if whole && is_end_code(sign * limit) && (abrupt || longest >= 2 * SHORTEST_RUN) {
+        return Some(clipping(sign, limit, runs.to_vec()));
+    }
+    if !abrupt {
+        return None;
+    }
     let noise = roughness(values, sign, limit, runs, height);
     let wander = if longest_equal_elsewhere(values, sign, limit) * 2 < longest { WANDER * height } else { 0.0 };
     let rough = noise.max(wander);
     let improbable = rough >= ROUGH_STEPS * step && (longest - 1) as f64 * (rough / step).ln() > ODDS;
-    (at_end_code || improbable).then(|| clipping(sign, limit, runs.to_vec()))
+    improbable.then(|| clipping(sign, limit, runs.to_vec()))
 }
 
 /// The readings next to the flat top lie well below it. A true plateau in coarse steps is reached one step at a time.
@@ -231,12 +246,27 @@ mod tests {
     #[test]
     fn whole_records_are_not_clipped() {
         for seed in 0..50 {
-            for (step, noise) in
-                [(0.1, 10.0), (1.0, 10.0), (10.0, 10.0), (10.0, 1.0), (1.0, 0.1), (20.0, 0.01), (0.01, 0.3)]
-            {
+            for (step, noise) in [
+                (0.1, 10.0),
+                (1.0, 10.0),
+                (10.0, 10.0),
+                (10.0, 1.0),
+                (1.0, 0.1),
+                (0.1, 0.001),
+                (0.01, 1e-4),
+                (20.0, 0.01),
+                (0.01, 0.3),
+            ] {
                 assert_eq!(find_clipping(&burn(step, noise, seed)), vec![], "step {step} noise {noise} seed {seed}");
             }
         }
+    }
+
+    #[test]
+    fn a_still_stand_that_grew_lighter_is_not_clipped_at_the_bottom() {
+        let values: Vec<f64> =
+            burn(0.1, 0.001, 2).into_iter().enumerate().map(|(at, v)| if at < 300 { v + 4.0 } else { v }).collect();
+        assert_eq!(find_clipping(&values), vec![]);
     }
 
     #[test]

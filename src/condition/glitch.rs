@@ -10,10 +10,10 @@ use std::collections::HashSet;
 /// Readings on each side that must agree.
 const SIDE: usize = 3;
 /// Readings on each side that tell the local noise.
-const WINDOW: usize = 16;
-/// A glitch stands off by more than so many times the local noise. A normal distribution passes this once in 10^22 readings;
+const WINDOW: usize = 24;
+/// A glitch stands off by more than so many times the local noise. A normal distribution passes this once in 10^32 readings;
 /// the margin is for noise that is not normal.
-const TIMES_NOISE: f64 = 10.0;
+const TIMES_NOISE: f64 = 12.0;
 /// And by more than so many times what the readings of its own sides move by.
 const TIMES_SIDES: f64 = 5.0;
 /// Longest run of bad readings that is bridged: a zero row may come twice.
@@ -423,7 +423,7 @@ mod tests {
                 if random.next_u32() % 2 == 0 { 800.0 + 10.0 * size } else { 800.0 - 10.0 * size }
             })
             .collect();
-        // A reading 10 local deviations off comes about once in a million at this tail.
+        // A reading twelve local deviations off comes a few times in a million at this tail.
         assert!(repair(&values).1.len() <= 1, "{:?}", repair(&values).1);
     }
 

@@ -208,12 +208,13 @@ fn candidates(layout: &Layout) -> Vec<TimeColumn> {
 fn runs_like_a_clock(layout: &Layout) -> Result<Option<TimeColumn>, Problem> {
     for index in 0..layout.columns {
         let sample = &layout.samples[index];
-        if layout.kinds[index] != Kind::Number || sample.len() < 3 || layout.columns < 2 {
+        if !matches!(layout.kinds[index], Kind::Number | Kind::NumberWithUnit) || sample.len() < 3 || layout.columns < 2
+        {
             continue;
         }
         let mut steps: Vec<f64> = sample.windows(2).map(|pair| pair[1] - pair[0]).collect();
         let total = steps.len();
-        let backward = steps.iter().filter(|step| !(**step >= 0.0)).count();
+        let backward = steps.iter().filter(|step| step.is_nan() || **step < 0.0).count();
         steps.retain(|step| *step > 0.0);
         if backward * 50 > total || steps.is_empty() {
             continue;
@@ -224,7 +225,9 @@ fn runs_like_a_clock(layout: &Layout) -> Result<Option<TimeColumn>, Problem> {
         if at(0.9) > 3.0 * at(0.1) {
             continue;
         }
-        if at(0.0) == 1.0 && at(1.0) == 1.0 && backward == 0 && steps.len() == total {
+        let by_one = steps.iter().filter(|step| **step == 1.0).count();
+        let counts = at(0.0) == 1.0 && by_one * 10 >= total * 9;
+        if counts || time_name(&layout.header.names[index]) == TimeName::Counter {
             return Err(Problem::new(format!(
                 "`{}` counts up by one: sample numbers, or milliseconds at 1 kHz; the log does not say which",
                 layout.header.names[index]
@@ -248,7 +251,7 @@ pub fn infer_unit(first: f64, step: f64, span: f64, whole: bool) -> Option<(&'st
             return Some((symbol, factor, "the stamps count from 1970"));
         }
     }
-    if !(step > 0.0) {
+    if step.is_nan() || step <= 0.0 {
         return None;
     }
     // Firings are logged at some 5 Hz to 100 kHz, and for less than two hours.

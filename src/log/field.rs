@@ -27,7 +27,7 @@ pub enum Shape {
     /// Nothing, or a word that says so (`nan`, `null`, `--`).
     Empty,
     Number,
-    /// A number with a unit behind it, as scales print: `12.35 kg`.
+    /// A number with a unit behind it, as scales print: `12.35 kg`; or with a label before it: `load: 12.35`.
     NumberWithUnit,
     /// `11:30:37.933`, perhaps after a date in other than ISO order.
     Clock,
@@ -236,9 +236,25 @@ fn number_with_marks(field: &[u8], decimal: Decimal) -> Option<f64> {
     fast_float2::parse::<f64, _>(&plain[..length]).ok().filter(|value| value.is_finite())
 }
 
-/// A number followed by a short unit: the number and the unit.
-pub fn number_with_unit(field: &[u8], decimal: Decimal) -> Option<(f64, &[u8])> {
+/// The label before a value, as in `load: 12.5` or `load=12.5`, and what follows it.
+pub fn labelled(field: &[u8]) -> Option<(&[u8], &[u8])> {
     let field = trim(field);
+    let at = memchr::memchr2(b':', b'=', field)?;
+    let (label, value) = (trim(&field[..at]), trim(&field[at + 1..]));
+    let plain = |byte: &u8| byte.is_ascii_alphanumeric() || matches!(byte, b'_' | b' ' | b'-' | b'.');
+    let good = label.len() <= 32 && label.first().is_some_and(u8::is_ascii_alphabetic) && label.iter().all(plain);
+    (good && !value.is_empty()).then_some((label, value))
+}
+
+/// A number with a label before it, a short unit behind it, or both: the number and the unit (empty if there is none).
+pub fn number_with_unit(field: &[u8], decimal: Decimal) -> Option<(f64, &[u8])> {
+    let mut field = trim(field);
+    if let Some((_, value)) = labelled(field) {
+        field = value;
+        if let Some(value) = number(field, decimal) {
+            return Some((value, &[]));
+        }
+    }
     let end = field.iter().position(|byte| byte.is_ascii_alphabetic() || *byte == b'%')?;
     // An exponent is part of the number.
     let (digits, unit) = field.split_at(end);
@@ -412,6 +428,9 @@ mod tests {
         assert_eq!(comma("12,"), None);
         assert_eq!(number(b"12,5", Decimal::Either), Some(12.5));
         assert_eq!(number(b"12.5", Decimal::Either), Some(12.5));
+        assert_eq!(number_with_unit(b"load: 12.35", Decimal::Point), Some((12.35, &b""[..])));
+        assert_eq!(number_with_unit(b"load=1,5 N", Decimal::Comma), Some((1.5, &b"N"[..])));
+        assert_eq!(number_with_unit(b"12:30", Decimal::Point), None);
         assert_eq!(number_with_unit(b"+  12.35 kg", Decimal::Point), Some((12.35, &b"kg"[..])));
     }
 

@@ -178,7 +178,12 @@ pub fn find_header(lines: &[(u64, &[u8])], columns: usize, splitter: Splitter, i
     let mut rows: Vec<(u64, Vec<String>)> = Vec::new();
     for &(number, line) in lines.iter().rev().filter(|(_, line)| !trim(line).is_empty()).take(6) {
         if let Some(fields) = header_fields(line, columns, splitter, indexed) {
-            rows.push((number, fields));
+            // Between spaces any sentence looks like names: among several lines only one with a telling word is the header.
+            let sentence =
+                splitter.delimiter == Delimiter::Spaces && lines.len() > 1 && !fields.iter().any(|name| tells(name));
+            if !sentence {
+                rows.push((number, fields));
+            }
         }
         if rows.len() == 2 {
             break;
@@ -202,10 +207,12 @@ pub fn find_header(lines: &[(u64, &[u8])], columns: usize, splitter: Splitter, i
     };
     if let Some((number, fields)) = names {
         header.names_line = Some(number);
+        // Names that are all units serve as both; one alone may be a name, as `F` for force.
+        let both = units_like(&fields);
         for (at, field) in fields.into_iter().enumerate().filter(|(_, field)| !field.is_empty()) {
             if let Some(unit) = bracketed_unit(&field).1 {
                 header.units[at] = Some(unit.to_owned());
-            } else if is_unit(&field) && field != "1" && field != "-" {
+            } else if both && field != "1" && field != "-" {
                 header.units[at] = Some(unbracket(&field).to_owned());
             }
             header.names[at] = field;
@@ -221,6 +228,19 @@ pub fn find_header(lines: &[(u64, &[u8])], columns: usize, splitter: Splitter, i
         }
     }
     header
+}
+
+/// A word that loggers head their columns with, a unit, or a name made for machines.
+fn tells(name: &str) -> bool {
+    const WORDS: [&str; 14] = [
+        "load", "force", "thrust", "weight", "mass", "pressure", "reading", "value", "raw", "counts", "temp", "kraft",
+        "last", "druck",
+    ];
+    time_name(name) != TimeName::No
+        || is_unit(name)
+        || bracketed_unit(name).1.is_some()
+        || name.contains('_')
+        || words(name).iter().any(|word| WORDS.contains(&word.as_str()))
 }
 
 /// The fields of a line that could name the columns, exactly `columns` of them; `None` if it could not.
@@ -246,7 +266,8 @@ fn header_fields(line: &[u8], columns: usize, splitter: Splitter, indexed: bool)
         if way.delimiter == Delimiter::Spaces {
             fields = join_brackets(fields);
         }
-        let exact_only = attempt > 0 || commented.is_some();
+        // Any sentence has about as many words as a log has columns.
+        let exact_only = attempt > 0 || commented.is_some() || way.delimiter == Delimiter::Spaces && !indexed;
         if let Some(fields) = fit(fields, columns, exact_only, indexed) {
             let letters = |field: &String| field.chars().any(char::is_alphabetic) || is_unit(field);
             if fields.iter().any(letters) {
@@ -288,7 +309,8 @@ fn fit(mut fields: Vec<String>, columns: usize, exact_only: bool, indexed: bool)
     if exact_only || columns < 2 {
         return None;
     }
-    if fields.len() + 1 == columns {
+    // One field over two columns is a banner more often than a header.
+    if fields.len() + 1 == columns && (columns > 2 || indexed) {
         // Data with an index the header went without, or a last column without a name.
         if indexed {
             fields.insert(0, String::new());
@@ -351,6 +373,17 @@ mod tests {
         assert_eq!(header.names, ["t", "load"]);
         assert_eq!(header.units, [Some("ms".to_owned()), Some("kg".to_owned())]);
         assert_eq!((header.names_line, header.units_line), (Some(3), Some(4)));
+    }
+
+    #[test]
+    fn a_sentence_is_not_a_header_and_a_letter_not_a_unit() {
+        let spaces = Splitter { delimiter: Delimiter::Spaces, arrow: false };
+        let banner: [(u64, &[u8]); 2] = [(1, b"amplifier ready"), (2, b"tare done")];
+        assert_eq!(find_header(&banner, 2, spaces, false).names_line, None);
+        let named: [(u64, &[u8]); 2] = [(1, b"amplifier ready"), (2, b"t F")];
+        assert_eq!(find_header(&named, 2, spaces, false).names, ["t", "F"]);
+        assert_eq!(find_header(&[(1, b"t,F")], 2, COMMA, false).units, [None, None]);
+        assert_eq!(find_header(&[(1, b"ms,N")], 2, COMMA, false).units[1].as_deref(), Some("N"));
     }
 
     #[test]

@@ -2,6 +2,7 @@
 
 use super::field::{self, Decimal, Delimiter, Shape, Splitter, trim};
 use super::header::{Header, comment_mark, find_header};
+use super::text::readable;
 use std::ops::Range;
 
 /// Lines that decide the delimiter; more would cost time and change nothing.
@@ -131,7 +132,8 @@ pub fn find_layout(head: &[(u64, &[u8])]) -> Option<Layout> {
     let indexed = samples.first().is_some_and(|sample| {
         sample.len() > 1 && sample[0].abs() <= 1.0 && sample.windows(2).all(|pair| pair[1] - pair[0] == 1.0)
     });
-    let header = find_header(before, best.columns, best.splitter, indexed);
+    let mut header = find_header(before, best.columns, best.splitter, indexed);
+    name_by_record(&mut header, head[first].1, &best, &kinds);
     Some(Layout {
         splitter: best.splitter,
         decimal,
@@ -147,6 +149,25 @@ pub fn find_layout(head: &[(u64, &[u8])]) -> Option<Layout> {
             .collect(),
         samples,
     })
+}
+
+/// Names and units that stand in the records themselves; a label there is surer than a banner that looks like a header.
+fn name_by_record(header: &mut Header, record: &[u8], form: &Candidate, kinds: &[Kind]) {
+    let mut fields = Vec::new();
+    form.splitter.split(record, &mut fields);
+    for (at, (range, _)) in fields.iter().zip(kinds).enumerate().filter(|(_, (_, kind))| **kind == Kind::NumberWithUnit)
+    {
+        let field = &record[range.clone()];
+        if let Some((label, _)) = field::labelled(field) {
+            header.names[at] = readable(label);
+        }
+        if header.units[at].is_none()
+            && let Some((_, unit)) = field::number_with_unit(field, form.decimal)
+            && !unit.is_empty()
+        {
+            header.units[at] = Some(readable(unit));
+        }
+    }
 }
 
 fn slot(shape: Shape) -> usize {

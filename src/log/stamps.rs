@@ -34,9 +34,31 @@ pub fn moduli(unit_s: f64, clock: bool) -> Vec<f64> {
     all
 }
 
+/// Steps between neighbours: all of them, or those of evenly placed blocks where there are more than `at_most`. Blocks, because
+/// single steps at even distances would miss a pattern such as 12, 13, 12, 13.
+pub fn sampled_steps(stamps: &[f64], at_most: usize) -> Vec<f64> {
+    let steps = |part: &[f64]| part.windows(2).map(|pair| pair[1] - pair[0]).collect::<Vec<f64>>();
+    if stamps.len() <= at_most.max(100) {
+        return steps(stamps);
+    }
+    const BLOCKS: usize = 50;
+    let length = at_most / BLOCKS + 2;
+    (0..BLOCKS).flat_map(|block| steps(&stamps[block * (stamps.len() - length) / (BLOCKS - 1)..][..length])).collect()
+}
+
+/// Steps enough for a median.
+pub const MANY_STEPS: usize = 100_000;
+
 /// The usual step: median of those that go forward; `None` if none does.
 pub fn usual_step(stamps: &[f64]) -> Option<f64> {
-    let mut steps: Vec<f64> = stamps.windows(2).map(|pair| pair[1] - pair[0]).filter(|step| *step > 0.0).collect();
+    let forward = |mut steps: Vec<f64>| {
+        steps.retain(|step| *step > 0.0);
+        steps
+    };
+    let mut steps = forward(sampled_steps(stamps, MANY_STEPS));
+    if steps.is_empty() {
+        steps = forward(sampled_steps(stamps, usize::MAX));
+    }
     if steps.is_empty() {
         return None;
     }
@@ -90,7 +112,7 @@ fn blame(p: f64, l: f64, x: f64, y: f64, step: f64) -> Option<Blame> {
     let current = (l - p - step).abs() + (y - l - 2.0 * step).abs();
     let order = (x - p - step).abs() + (l - x - step).abs() + (y - l - step).abs();
     let least = previous.min(current).min(order);
-    if !(least <= 3.0 * step) {
+    if least.is_nan() || least > 3.0 * step {
         return None;
     }
     if order <= least && x > p && y > l {
@@ -99,6 +121,18 @@ fn blame(p: f64, l: f64, x: f64, y: f64, step: f64) -> Option<Blame> {
         Some(Blame::Current)
     } else if x >= p && y >= x {
         Some(Blame::Previous)
+    } else {
+        None
+    }
+}
+
+/// The same for the very last stamp: nothing follows that could decide.
+fn blame_at_end(p: f64, l: f64, x: f64, step: f64) -> Option<Blame> {
+    let near = |value: f64, steps: f64| (value - steps * step).abs() < 0.6 * step;
+    if near(x - p, 2.0) {
+        Some(Blame::Previous)
+    } else if near(x - p, 1.0) && near(l - x, 1.0) {
+        Some(Blame::Order)
     } else {
         None
     }
@@ -141,6 +175,7 @@ pub fn untangle(raw: &[f64], restarts: &[usize], moduli: &[f64], step: f64) -> U
             let next = (index + 1 < raw.len()).then(|| walk.at(index + 1));
             let verdict = match (known, next) {
                 (Some(p), Some(y)) if !restarted => blame(p, l, x, y, step),
+                (Some(p), None) if !restarted => blame_at_end(p, l, x, step),
                 _ => None,
             };
             match verdict {
@@ -166,6 +201,10 @@ pub fn untangle(raw: &[f64], restarts: &[usize], moduli: &[f64], step: f64) -> U
                     if let Some(modulus) = walk.rollover(index, l) {
                         walk.offset += modulus;
                         out.rollovers.push((index, modulus));
+                    } else if next.is_none() && !restarted {
+                        // One stamp is too little to speak of a clock that began anew.
+                        out.bad.push(index);
+                        accept = false;
                     } else {
                         walk.offset = l + step - raw[index];
                         out.resets.push(index);
@@ -188,17 +227,30 @@ fn starts_astray(walk: &Walk<'_>, index: usize, restart: Option<usize>) -> bool 
     if index + 3 >= walk.raw.len() || restart == Some(index + 1) || index > LOOK_AHEAD {
         return false;
     }
+    // The second stamp is to blame if the third stands where it should after the first.
+    if (walk.raw[index + 2] - walk.raw[index] - 2.0 * walk.step).abs() < 0.6 * walk.step {
+        return false;
+    }
     let steps = [1, 2].map(|ahead| walk.raw[index + ahead + 1] - walk.raw[index + ahead]);
     let follows_well = steps.iter().all(|step| (0.0..=FAR * walk.step).contains(step));
     let first = walk.raw[index + 1] - walk.raw[index];
-    let far = first < 0.0 && walk.rollover(index + 1, walk.raw[index]).is_none() || first > 1000.0 * walk.step;
+    let far = first < 0.0 && walk.rollover(index + 1, walk.raw[index]).is_none() || first > 1000.0 * walk.step
+        // A capture that began in the middle of a line lacks the leading digits of its first stamp.
+        || first > FAR * walk.step && whole_digits(walk.raw[index]) < whole_digits(walk.raw[index + 1]);
     follows_well && far
+}
+
+/// Digits before the decimal mark.
+fn whole_digits(value: f64) -> u32 {
+    let whole = value.abs().floor();
+    if whole < 1.0 { 0 } else { whole.log10().floor() as u32 + 1 }
 }
 
 /// Stamps that stand off the middle of their neighbours in a clock that is otherwise even; gives them the middle.
 /// Returns their indices. `time` has no NaN and rises.
 pub fn even_out(time: &mut [f64], step: f64) -> Vec<usize> {
-    let mut deviations: Vec<f64> = time.windows(2).map(|pair| (pair[1] - pair[0] - step).abs()).collect();
+    let mut deviations = sampled_steps(time, MANY_STEPS);
+    deviations.iter_mut().for_each(|value| *value = (*value - step).abs());
     if deviations.len() < 8 {
         return Vec::new();
     }

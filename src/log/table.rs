@@ -45,9 +45,12 @@ enum Fault {
     Fragment,
 }
 
+/// Records whose last field shows how long such a field is. Few, for readings grow and shrink.
+const LATEST: usize = 8;
+
 /// The lengths of the last fields of the latest records, to know a last line that was cut.
 struct Tail {
-    lengths: [(u16, u16); 64],
+    lengths: [(u16, u16); LATEST],
     next: usize,
 }
 
@@ -59,14 +62,14 @@ impl Tail {
     }
 
     fn push(&mut self, field: &[u8]) {
-        self.lengths[self.next % 64] = Self::measure(field);
+        self.lengths[self.next % LATEST] = Self::measure(field);
         self.next += 1;
     }
 
     /// Shorter, or with fewer decimals, than every one of the latest fields.
     fn looks_cut(&self, field: &[u8]) -> bool {
         let (length, fraction) = Self::measure(field);
-        let seen = &self.lengths[..self.next.min(64)];
+        let seen = &self.lengths[..self.next.min(LATEST)];
         seen.len() >= 2 && (seen.iter().all(|known| length < known.0) || seen.iter().all(|known| fraction < known.1))
     }
 }
@@ -83,7 +86,7 @@ pub fn read_table(lines: &mut Lines<'_>, layout: &Layout, plan: &Plan, ledger: &
         values: vec![0.0; plan.channels.len()],
         last_needed: plan.channels.iter().copied().chain(plan.stamp.map(|(at, _)| at)).max().unwrap_or(0),
         date_origin_ns: None,
-        tail: Tail { lengths: [(0, 0); 64], next: 0 },
+        tail: Tail { lengths: [(0, 0); LATEST], next: 0 },
         stamp: f64::NAN,
     };
     let mut table = Table { channels: vec![Vec::new(); plan.channels.len()], ..Table::default() };

@@ -5,7 +5,7 @@ use super::columns::{TimeColumn, infer_unit};
 use super::layout::Kind;
 use super::ledger::Ledger;
 use super::spread::{clock_grid, resolve_repeats};
-use super::stamps::{even_out, moduli, untangle, usual_step};
+use super::stamps::{MANY_STEPS, even_out, moduli, sampled_steps, untangle, usual_step};
 use super::table::Table;
 use crate::problem::Problem;
 
@@ -56,7 +56,7 @@ pub fn time_base(
     let counters =
         if column.is_some_and(|time| time.kind == Kind::DateTime) { Vec::new() } else { moduli(unit_s, clock) };
     let untangled = untangle(raw, &table.restarts, &counters, step);
-    let lines: Vec<u64> = table.line.iter().map(|line| u64::from(*line)).collect();
+    let lines = table.line.as_slice();
     for &(index, modulus) in &untangled.rollovers {
         let what = if clock { "passed midnight or noon" } else { "rolled over" };
         ledger.entry(
@@ -79,12 +79,12 @@ pub fn time_base(
         findings.push(format!("clock began anew at line {}; the time lost there is not known", lines[index]));
     }
     let mut time = untangled.time;
-    mend_bad_stamps(&mut time, &untangled.bad, raw, &lines, ledger);
+    mend_bad_stamps(&mut time, &untangled.bad, raw, lines, ledger);
 
     let mut record: Vec<u32> = (0..raw.len() as u32).filter(|&index| time[index as usize].is_finite()).collect();
     if !untangled.late.is_empty() {
         for &index in &untangled.late {
-            ledger.reordered(lines[index], || {
+            ledger.reordered(u64::from(lines[index]), || {
                 format!("stamp {} stands behind a later one; moved to its place", raw[index])
             });
         }
@@ -92,11 +92,11 @@ pub fn time_base(
     }
     let mut sorted: Vec<f64> = record.iter().map(|&index| time[index as usize]).collect();
     drop(time);
-    let resolution = settle(&mut sorted, &mut record, table, step, unit_s, &lines, ledger, &mut findings);
+    let resolution = settle(&mut sorted, &mut record, table, step, unit_s, lines, ledger, &mut findings);
 
     let usual = usual_step(&sorted).unwrap_or(step);
     for index in even_out(&mut sorted, usual) {
-        let line = lines[record[index] as usize];
+        let line = u64::from(lines[record[index] as usize]);
         ledger.stamp_replaced(line, "stamp off an otherwise even clock; put midway between its neighbours".to_owned());
     }
     let origin = match table.early_stamp {
@@ -158,7 +158,7 @@ fn unit_of(
 }
 
 /// A stamp that was misread where its sample was due is put back by its neighbours; any other is dropped with its record.
-fn mend_bad_stamps(time: &mut [f64], bad: &[usize], raw: &[f64], lines: &[u64], ledger: &mut Ledger) {
+fn mend_bad_stamps(time: &mut [f64], bad: &[usize], raw: &[f64], lines: &[u32], ledger: &mut Ledger) {
     let good: Vec<f64> = time.iter().copied().filter(|stamp| stamp.is_finite()).collect();
     let mean_step = match (good.first(), good.last()) {
         (Some(first), Some(last)) if good.len() > 1 => {
@@ -187,9 +187,11 @@ fn mend_bad_stamps(time: &mut [f64], bad: &[usize], raw: &[f64], lines: &[u64], 
                 Some((a, b)) => {
                     time[index] = a + (b - a) * (index - start + 1) as f64 / (missing + 1.0);
                     let message = format!("stamp {} fits neither neighbour; put evenly between them", raw[index]);
-                    ledger.stamp_replaced(lines[index], message);
+                    ledger.stamp_replaced(u64::from(lines[index]), message);
                 }
-                None => ledger.dropped(lines[index], || format!("stamp {} fits neither neighbour", raw[index])),
+                None => {
+                    ledger.dropped(u64::from(lines[index]), || format!("stamp {} fits neither neighbour", raw[index]))
+                }
             }
         }
     }
@@ -203,12 +205,18 @@ fn settle(
     table: &Table,
     step: f64,
     unit_s: f64,
-    lines: &[u64],
+    lines: &[u32],
     ledger: &mut Ledger,
     findings: &mut Vec<String>,
 ) -> f64 {
     let grid = clock_grid(sorted, step);
     let mut resolution = grid;
+    if sorted.windows(2).all(|pair| pair[1] > pair[0]) {
+        if grid > 0.0 {
+            findings.push(format!("the clock's stamps step by {:.6} s", grid * unit_s));
+        }
+        return resolution;
+    }
     let adjacent = |index: usize| record[index] == record[index - 1] + 1;
     let same: Vec<bool> = (0..record.len())
         .map(|index| index > 0 && adjacent(index) && table.same_line[record[index] as usize])
@@ -217,12 +225,12 @@ fn settle(
         let (now, then) = (record[index] as usize, record[index - 1] as usize);
         table.channels.iter().all(|channel| channel[now] == channel[then])
     };
-    let places: Vec<f64> = record.iter().map(|index| lines[*index as usize] as f64).collect();
+    let places: Vec<f64> = record.iter().map(|index| f64::from(lines[*index as usize])).collect();
     let repeats = resolve_repeats(sorted, &same, &unchanged, &places, step);
     if repeats.coarse {
         resolution = step;
         let message = format!(
-            "the clock steps by {} s, more slowly than samples come; {} stamps spread evenly over its steps",
+            "the clock ticks by {} s, too coarsely for the rate of the samples; {} stamps spread evenly",
             step * unit_s,
             repeats.spread
         );
@@ -241,9 +249,9 @@ fn settle(
     for index in 0..sorted.len() {
         let (stamp, number) = (sorted[index], record[index]);
         if duplicates.next_if_eq(&index).is_some() {
-            ledger.dropped(lines[number as usize], || "the record before, written once more".to_owned());
+            ledger.dropped(u64::from(lines[number as usize]), || "the record before, written once more".to_owned());
         } else if stamp <= latest {
-            ledger.dropped(lines[number as usize], || "stamp not later than the one before".to_owned());
+            ledger.dropped(u64::from(lines[number as usize]), || "stamp not later than the one before".to_owned());
         } else {
             latest = stamp;
             sorted[kept] = stamp;
@@ -274,7 +282,8 @@ fn usual_interval(time_s: &[f64], resolution_s: f64) -> f64 {
 /// Intervals that stand out of the jitter: more than 1.6 usual ones, more than six standard deviations (from the median
 /// absolute deviation, which the gaps themselves do not move), more than a step of the clock.
 fn find_gaps(time_s: &[f64], interval_s: f64, resolution_s: f64) -> Vec<Gap> {
-    let mut deviations: Vec<f64> = time_s.windows(2).map(|pair| (pair[1] - pair[0] - interval_s).abs()).collect();
+    let mut deviations = sampled_steps(time_s, MANY_STEPS);
+    deviations.iter_mut().for_each(|value| *value = (*value - interval_s).abs());
     if deviations.len() < 2 {
         return Vec::new();
     }
