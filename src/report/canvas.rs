@@ -25,7 +25,7 @@ pub(crate) mod palette {
     pub(crate) const PAPER: RGBColor = RGBColor(253, 252, 247);
     pub(crate) const INK: RGBColor = RGBColor(22, 26, 33);
     pub(crate) const GRID: RGBColor = RGBColor(214, 211, 200);
-    pub(crate) const FAINT: RGBColor = RGBColor(139, 150, 163);
+    pub(crate) const FAINT: RGBColor = RGBColor(150, 160, 172);
     pub(crate) const STRONG: RGBColor = RGBColor(14, 50, 104);
     pub(crate) const SAND: RGBColor = RGBColor(246, 231, 188);
     pub(crate) const BRICK: RGBColor = RGBColor(163, 45, 22);
@@ -48,7 +48,6 @@ pub(crate) enum Anchor {
 
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(crate) enum Stroke {
-    Solid,
     Dashed,
     /// Long and short in turn.
     DashDot,
@@ -89,7 +88,7 @@ impl<'a> Canvas<'a> {
 
     /// Width of text in pixels.
     pub(crate) fn text_width(&self, text: &str, size: f64, bold: bool) -> i32 {
-        let style = Self::style(size / PLOTTERS_FONT_SCALE, bold, palette::INK, FontTransform::None);
+        let style = Self::style(size, bold, palette::INK, FontTransform::None);
         self.area.estimate_text_size(text, &style).map_or(0, |(width, _)| width as i32)
     }
 
@@ -140,9 +139,8 @@ impl<'a> Canvas<'a> {
         stroke: Stroke,
     ) -> Result<(), Problem> {
         let lengths: &[f64] = match stroke {
-            Stroke::Solid => return self.line(points.to_vec(), width, colour),
             Stroke::Dashed => &[18.0, 12.0],
-            Stroke::DashDot => &[30.0, 9.0, 7.0, 9.0],
+            Stroke::DashDot => &[34.0, 12.0, 10.0, 12.0],
         };
         for dash in dashes(points, lengths) {
             self.line(dash, width, colour)?;

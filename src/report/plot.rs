@@ -64,9 +64,9 @@ pub fn thrust_svg(firing: &Firing, curves: &Curves, units: Units) -> Result<Stri
     let burn = [frame.x(firing.burn.start_s), frame.x(firing.burn.end_s)];
     canvas.rectangle([(burn[0], TOP), (burn[1], BOTTOM)], palette::SAND)?;
     axes(&canvas, &frame, units)?;
+    canvas.line(envelope(&curves.time_s, &curves.raw_n, &frame), 2, palette::FAINT)?;
     let threshold_y = frame.y(curves.burn_threshold_n);
     canvas.stroked(&[(LEFT, threshold_y), (frame.right, threshold_y)], 3, palette::BRICK, Stroke::Dashed)?;
-    canvas.line(envelope(&curves.time_s, &curves.raw_n, &frame), 2, palette::FAINT)?;
     if let Some((points, highest_pa)) = &pressure {
         canvas.stroked(points, 5, palette::MOSS, Stroke::DashDot)?;
         pressure_axis(&canvas, &frame, *highest_pa, units)?;
@@ -234,7 +234,7 @@ fn peak(canvas: &Canvas, frame: &Frame, firing: &Firing, curves: &Curves, units:
 /// Samples of each line with its name, in two rows between title and frame.
 fn legend(canvas: &Canvas, with_pressure: bool) -> Result<(), Problem> {
     let rows = [96, 140];
-    let columns = [LEFT, LEFT + 350, LEFT + 700];
+    let columns = [LEFT, LEFT + 335, LEFT + 670];
     let sample = |x: i32, y: i32| vec![(x, y), (x + 64, y)];
     let name = |text: &str, x: i32, y: i32| canvas.text(text, (x + 78, y), Anchor::Left, INK);
     canvas.line(sample(columns[0], rows[0]), 6, palette::STRONG)?;

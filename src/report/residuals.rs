@@ -25,7 +25,7 @@ pub struct ResidualPoint {
 const TOP: i32 = 150;
 const BOTTOM: i32 = HEIGHT - 108;
 const LEFT: i32 = 170;
-const RIGHT: i32 = WIDTH - 160;
+const RIGHT: i32 = WIDTH - 176;
 const INK: Look = Look { size: TEXT, bold: false, colour: palette::INK };
 
 /// Draws residuals as SVG, 1200 by 800: newtons (or pounds) at the left, percent of `full_scale_n` at the right.
@@ -91,7 +91,9 @@ pub fn residual_svg(
     canvas.line(vec![(LEFT, TOP), (LEFT, BOTTOM), (RIGHT, BOTTOM), (RIGHT, TOP)], 3, palette::INK)?;
     canvas.line(vec![(LEFT, y(0.0)), (RIGHT, y(0.0))], 4, palette::INK)?;
     for point in points {
-        marker(&canvas, (x(point.force_n), y(point.residual_n)), point.direction)?;
+        // A little aside, so that rising and falling points at one force do not cover each other.
+        let aside = if point.direction == Direction::Up { -8 } else { 8 };
+        marker(&canvas, (x(point.force_n) + aside, y(point.residual_n)), point.direction)?;
     }
     canvas.finish()?;
     Ok(svg)
