@@ -138,10 +138,8 @@ fn stage_and_move(
     files: &[OutputFile],
     ours: &[&str],
 ) -> Result<Vec<PathBuf>, Problem> {
-    let staging = tempfile::Builder::new()
-        .prefix(".burntally-")
-        .tempdir_in(parent)
-        .map_err(|error| refused(parent, &error))?;
+    let staging =
+        tempfile::Builder::new().prefix(".burntally-").tempdir_in(parent).map_err(|error| refused(parent, &error))?;
     let new = staging.path().join("new");
     fs::create_dir(&new).map_err(|error| refused(&new, &error))?;
     for file in files {

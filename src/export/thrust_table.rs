@@ -141,10 +141,7 @@ fn choose(time_s: &[f64], curve_n: &[f64], peak: usize, rows: usize) -> Vec<usiz
     let last = curve_n.len() - 1;
     let mut chosen = vec![0, peak, last];
     let near_n = SHAPE_TOLERANCE * curve_n[peak];
-    let mut pieces = BinaryHeap::from([
-        Piece::new(time_s, curve_n, 0, peak),
-        Piece::new(time_s, curve_n, peak, last),
-    ]);
+    let mut pieces = BinaryHeap::from([Piece::new(time_s, curve_n, 0, peak), Piece::new(time_s, curve_n, peak, last)]);
     while chosen.len() < rows {
         let Some(piece) = pieces.pop() else { break };
         // A piece near enough is left whole, but for the few rows that are needed to carry area.

@@ -281,7 +281,10 @@ mod tests {
     #[test]
     fn dashes_cover_the_line_in_turn() {
         let cut = dashes(&[(0, 0), (100, 0)], &[18.0, 12.0]);
-        assert_eq!(cut, [vec![(0, 0), (18, 0)], vec![(30, 0), (48, 0)], vec![(60, 0), (78, 0)], vec![(90, 0), (100, 0)]]);
+        assert_eq!(
+            cut,
+            [vec![(0, 0), (18, 0)], vec![(30, 0), (48, 0)], vec![(60, 0), (78, 0)], vec![(90, 0), (100, 0)]]
+        );
     }
 
     #[test]

@@ -2,6 +2,7 @@
 
 pub mod advice;
 pub mod figures;
+pub mod outputs;
 pub mod page;
 pub mod plot;
 pub mod residuals;

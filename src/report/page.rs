@@ -148,9 +148,23 @@ mod tests {
         let svg = plot::thrust_svg(&firing, &sample::curves(300), Units::Si).unwrap();
         let html = page(&firing, Some(&svg), Units::Si).unwrap();
         for text in [
-            "<svg", "J284", "771.2 ± 3.9 N·s", "first to last crossing of 5 % of peak thrust", "baseline_after",
-            "one sample at full scale", "1.9 N·s", "89.0 %", &"ab".repeat(32), "not a certified one", "barricade",
-            "Ignite remotely", "misfire", "Nobody stands near", "Local law", "viewport", "prefers-color-scheme",
+            "<svg",
+            "J284",
+            "771.2 ± 3.9 N·s",
+            "first to last crossing of 5 % of peak thrust",
+            "baseline_after",
+            "one sample at full scale",
+            "1.9 N·s",
+            "89.0 %",
+            &"ab".repeat(32),
+            "not a certified one",
+            "barricade",
+            "Ignite remotely",
+            "misfire",
+            "Nobody stands near",
+            "Local law",
+            "viewport",
+            "prefers-color-scheme",
         ] {
             assert!(html.contains(text), "{text}");
         }

@@ -1,7 +1,7 @@
 //! The picture of a firing: raw samples faint, conditioned thrust strong, the burn shaded, zero, 5 % line and peak.
 
 use super::canvas::{Anchor, Canvas, HEIGHT, Look, Stroke, TEXT, TITLE, WIDTH, palette, shortened, ticks};
-use super::units::{Units, significant, words};
+use super::units::{Units, fixed, words};
 use crate::firing::{Curves, Firing};
 use crate::problem::Problem;
 
@@ -185,13 +185,14 @@ fn axes(canvas: &Canvas, frame: &Frame, units: Units) -> Result<(), Problem> {
 }
 
 fn tick(value: f64, places: i32) -> String {
-    super::units::fixed(value, places).replace('-', "−")
+    fixed(value, places).replace('-', "−")
 }
 
 /// Pressure as points, with its highest value in Pa; zero pressure stands on zero thrust.
 fn pressure(curves: &Curves, frame: &Frame) -> Option<(Vec<(i32, i32)>, f64)> {
     let values = curves.pressure_pa.as_ref()?;
-    let inside = curves.time_s.iter().zip(values).filter(|(t, p)| (frame.from_s..=frame.to_s).contains(*t) && p.is_finite());
+    let inside =
+        curves.time_s.iter().zip(values).filter(|(t, p)| (frame.from_s..=frame.to_s).contains(*t) && p.is_finite());
     let highest = inside.fold(0.0_f64, |highest, (_, p)| highest.max(*p));
     if highest <= 0.0 {
         return None;
@@ -220,7 +221,8 @@ fn peak(canvas: &Canvas, frame: &Frame, firing: &Firing, curves: &Curves, units:
     let Some(figure) = &firing.quantities.peak_thrust else { return Ok(()) };
     let at = (frame.x(curves.peak_time_s), frame.y(figure.value));
     canvas.disc(at, 10, palette::BRICK)?;
-    let after_s = significant(curves.peak_time_s - frame.zero_s, 3);
+    let after_s = curves.peak_time_s - frame.zero_s;
+    let after_s = fixed(after_s, if after_s < 0.1 { 3 } else { 2 });
     let label = format!("peak {} at {after_s} s", words(figure, units).line());
     let look = Look { bold: true, colour: palette::BRICK, ..INK };
     let half = canvas.text_width(&label, look.size, true) / 2 + 12;
@@ -312,10 +314,8 @@ mod tests {
         let mut pixels = vec![0; reader.output_buffer_size().unwrap()];
         reader.next_frame(&mut pixels).unwrap();
         // The run's id stands at the upper left: dark pixels there mean that the font was found.
-        let dark = (20..64)
-            .flat_map(|y| (136..400).map(move |x| (y * 1200 + x) * 3))
-            .filter(|at| pixels[*at] < 90)
-            .count();
+        let dark =
+            (20..64).flat_map(|y| (136..400).map(move |x| (y * 1200 + x) * 3)).filter(|at| pixels[*at] < 90).count();
         assert!(dark > 500, "{dark}");
     }
 

@@ -32,12 +32,7 @@ const INK: Look = Look { size: TEXT, bold: false, colour: palette::INK };
 ///
 /// # Errors
 /// No points, numbers that are not finite, a full scale that is not positive.
-pub fn residual_svg(
-    title: &str,
-    points: &[ResidualPoint],
-    full_scale_n: f64,
-    units: Units,
-) -> Result<String, Problem> {
+pub fn residual_svg(title: &str, points: &[ResidualPoint], full_scale_n: f64, units: Units) -> Result<String, Problem> {
     let finite = points.iter().all(|point| point.force_n.is_finite() && point.residual_n.is_finite());
     if points.is_empty() || !finite || full_scale_n.is_nan() || full_scale_n <= 0.0 {
         return Err(Problem::new("there are no residuals to draw").expected("points and a positive full scale"));
@@ -52,9 +47,8 @@ pub fn residual_svg(
     };
     // Zero in the middle, so that up and down look alike; a perfect fit still gets a scale.
     let largest_n = points.iter().map(|point| point.residual_n.abs()).fold(1e-6 * full_scale_n, f64::max) * 1.2;
-    let y = |residual_n: f64| {
-        (TOP + BOTTOM) / 2 - (residual_n / largest_n * f64::from(BOTTOM - TOP) / 2.0).round() as i32
-    };
+    let y =
+        |residual_n: f64| (TOP + BOTTOM) / 2 - (residual_n / largest_n * f64::from(BOTTOM - TOP) / 2.0).round() as i32;
 
     let mut svg = String::new();
     let canvas = Canvas::new(&mut svg)?;

@@ -54,7 +54,11 @@ pub fn summary(firing: &Firing, view: View, files: Option<(&Path, &[&str])>) -> 
     checks(firing, view, &mut lines);
     if let Some((folder, names)) = files {
         lines.push(String::new());
-        lines.extend(wrapped(&format!("written to {}: {}", plain(&folder.display().to_string()), names.join(", ")), "", "  "));
+        lines.extend(wrapped(
+            &format!("written to {}: {}", plain(&folder.display().to_string()), names.join(", ")),
+            "",
+            "  ",
+        ));
     }
     lines.extend(advice::SHORT_CAUTION.map(str::to_owned));
     lines.push(String::new());
@@ -102,10 +106,8 @@ fn heading(firing: &Firing, view: View, lines: &mut Vec<String>) {
         Some(class) => {
             let mut text = format!("class {}, {} % up its band", class.letter, fixed(class.position * 100.0, 0));
             if let Some(probability) = class.probability.as_ref().filter(|probability| probability.len() > 1) {
-                let parts: Vec<String> = probability
-                    .iter()
-                    .map(|(letter, p)| format!("{letter} {} %", significant(p * 100.0, 2)))
-                    .collect();
+                let parts: Vec<String> =
+                    probability.iter().map(|(letter, p)| format!("{letter} {} %", significant(p * 100.0, 2))).collect();
                 text.push_str(&format!("; probability {}", parts.join(", ")));
             }
             lines.push(format!("  {}  {text}", view.paint(&format!("{:<18}", class.designation), Tone::Strong)));

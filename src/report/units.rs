@@ -147,11 +147,18 @@ pub fn fixed(value: f64, decimals: i32) -> String {
         format!("{:.0}", (value / step).round() * step)
     };
     // Minus zero says nothing to a person.
-    if text.starts_with('-') && !text.contains(|c: char| ('1'..='9').contains(&c)) { text[1..].to_owned() } else { text }
+    if text.starts_with('-') && !text.contains(|c: char| ('1'..='9').contains(&c)) {
+        text[1..].to_owned()
+    } else {
+        text
+    }
 }
 
 /// A plain number to so many significant digits.
 pub fn significant(value: f64, digits: i32) -> String {
+    if value == 0.0 {
+        return "0".to_owned();
+    }
     fixed(value, decimals_for(value, digits))
 }
 
@@ -198,7 +205,7 @@ mod tests {
 
     #[test]
     fn plain_numbers() {
-        assert_eq!(significant(0.0, 3), "0.000");
+        assert_eq!(significant(0.0, 3), "0");
         assert_eq!(significant(1234.5, 2), "1200");
         assert_eq!(fixed(-0.001, 1), "0.0");
         assert_eq!(significant(0.099_96, 2), "0.10");
