@@ -37,10 +37,6 @@ impl Console {
         Console { common }
     }
 
-    pub fn json(self) -> bool {
-        self.common.json
-    }
-
     /// Colour only on a terminal that can, and not where NO_COLOR is set.
     pub fn view(self) -> View {
         let wanted = |name: &str| std::env::var_os(name).is_none_or(|value| value.is_empty());

@@ -229,6 +229,9 @@ mod tests {
         assert!(order.windows(2).all(|pair| place(pair[0]) < place(pair[1])), "{text}");
         assert!(!text.contains("sampling"), "checks that passed are only counted");
         assert!(text.contains("95 %"));
+        if let Ok(folder) = std::env::var("BURNTALLY_TEST_PICTURES") {
+            std::fs::write(Path::new(&folder).join("summary.txt"), &text).unwrap();
+        }
     }
 
     #[test]
