@@ -14,6 +14,8 @@ pub mod condition;
 pub mod export;
 /// The reduced firing: figures, checks, provenance; what result.json holds.
 pub mod firing;
+/// What a run names, read into the inputs of its reduction.
+pub mod load;
 /// Bytes to columns to a time base, with every repair and drop counted.
 pub mod log;
 /// Impulse, thrust, times, class.

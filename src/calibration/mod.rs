@@ -1,6 +1,20 @@
 //! Points, constants or data sheet to a fitted curve; readings to newtons.
 
-use crate::quantity::Unit;
+mod curve;
+mod degree;
+mod file;
+mod fit;
+mod forms;
+mod points;
+mod report;
+mod table;
+mod weights;
+
+pub use file::{Calibrated, load, load_text};
+pub use forms::scaled_identity;
+pub use report::{CalibrationPoint, CalibrationReport};
+
+use crate::quantity::{Dimension, Unit};
 
 /// What an error of the force scale comes from.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash, PartialOrd, Ord)]
@@ -32,11 +46,12 @@ pub enum ErrorShape {
     Coefficients(Vec<f64>),
     /// Relative change of force.
     Relative(f64),
-    /// Change of force that is nil up to `from_n` and grows as the next power of force beyond it.
+    /// Change of force that is nil while |F| is up to `from_n` and is `coefficient` |F|^(degree − 1) (|F| − from_n)
+    /// beyond it, with the sign of F; the coefficient in N per N^degree.
     Beyond { from_n: f64, degree: usize, coefficient: f64 },
 }
 
-/// Readings to newtons.
+/// Readings to newtons; of a pressure transducer, to pascals, and every `_n` below is then in Pa.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Calibration {
     /// For messages: the cell's name or the channel's unit.
@@ -50,4 +65,12 @@ pub struct Calibration {
     pub capacity_n: Option<f64>,
     /// Independent errors of the scale; `None`: nothing is known of them.
     pub errors: Option<Vec<ErrorDirection>>,
+    /// Force, or Pressure.
+    pub measures: Dimension,
+    /// Degrees of freedom behind the `Fit` directions; `None`: no scatter to judge by.
+    pub fit_degrees_of_freedom: Option<f64>,
+    /// What was found, chosen or assumed, one plain sentence each.
+    pub findings: Vec<String>,
+    /// What makes the calibration less than it should be, one plain sentence each; not empty: a caution on its quality.
+    pub cautions: Vec<String>,
 }

@@ -1,1 +1,4 @@
+//! Impulse, thrust, times, class.
 
+pub mod class;
+pub mod integral;

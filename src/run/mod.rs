@@ -1,5 +1,12 @@
 //! The firing as its run.toml describes it.
 
+pub mod document;
+mod gravity;
+mod parse;
+
+pub use gravity::{Gravity, gravity, normal_gravity, read_site};
+pub use parse::{check_id, read, read_text};
+
 use crate::quantity::{Measured, Unit};
 use std::path::PathBuf;
 

@@ -1,0 +1,322 @@
+//! Points to a fitted curve with everything that may be wrong with it.
+
+use super::degree::{self, Choice, Evidence};
+use super::fit::{self, Fit, monotonic_within, slope, unscale_matrix, value};
+use super::report::{CalibrationPoint, CalibrationReport, quality};
+use super::weights::{self, Tolerance, WeightErrors, levels};
+use super::{Calibrated, Calibration, ErrorDirection, ErrorShape, ScaleSource};
+use crate::problem::Problem;
+use crate::quantity::{Dimension, Unit};
+use crate::run::Gravity;
+use nalgebra::{DMatrix, DVector};
+
+/// One point as listed.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Listed {
+    pub load: f64,
+    pub reading: f64,
+    pub rising: bool,
+}
+
+/// Everything a calibration by points says.
+#[derive(Debug, Clone)]
+pub(super) struct Points {
+    pub name: String,
+    pub capacity_n: Option<f64>,
+    pub listed: Vec<Listed>,
+    /// Of the loads: mass, force or pressure.
+    pub unit: Unit,
+    pub reading_unit: Unit,
+    pub gravity: Gravity,
+    pub density_kg_m3: f64,
+    pub tolerance: Option<Tolerance>,
+    pub weight_errors: WeightErrors,
+    /// The file says itself how the errors hang together.
+    pub weight_errors_stated: bool,
+    pub degree: Option<usize>,
+}
+
+impl Points {
+    fn by_mass(&self) -> bool {
+        self.unit.dimension == Dimension::Mass
+    }
+
+    fn force_n(&self, load: f64) -> f64 {
+        if self.by_mass() {
+            weights::force_n(load * self.unit.factor, self.gravity.value_m_s2, self.density_kg_m3)
+        } else {
+            load * self.unit.factor
+        }
+    }
+}
+
+/// Fits the points.
+///
+/// # Errors
+/// Fewer than two distinct loads, too few for the degree asked for, readings that do not change with the load.
+pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
+    let forces_n: Vec<f64> = points.listed.iter().map(|point| points.force_n(point.load)).collect();
+    let readings: Vec<f64> = points.listed.iter().map(|point| point.reading).collect();
+    let (distinct, _) = levels(&forces_n);
+    let (Some(&low), Some(&high)) = (distinct.first(), distinct.last()) else {
+        return Err(Problem::new("there are no points").expected("at least two loads with their readings"));
+    };
+    let weight_errors = match &points.tolerance {
+        Some(tolerance) => weights::independent_errors(&forces_n, tolerance, points.weight_errors),
+        None => Vec::new(),
+    };
+    let evidence = Evidence { forces_n: &forces_n, readings: &readings, weight_errors: &weight_errors };
+    let choice = chosen(points, evidence, &distinct)?;
+    let coefficients = choice.fit.coefficients();
+    let span = (value(&coefficients, high) - value(&coefficients, low)).abs();
+    let largest = readings.iter().fold(0.0f64, |largest, reading| largest.max(reading.abs()));
+    if !(span > 1e-12 * largest) || !coefficients.iter().all(|coefficient| coefficient.is_finite()) {
+        return Err(Problem::new("the readings do not change with the load")
+            .expected("readings that follow the weights")
+            .remedy("check the columns of the points and their unit"));
+    }
+    if !monotonic_within(&coefficients, low, high) {
+        return Err(Problem::new(format!("a curve of degree {} turns over within the weights", choice.degree))
+            .expected("readings that rise or fall throughout")
+            .remedy("check the points for a swapped pair, or force degree = 1 under [fit]"));
+    }
+    let changes = coefficient_changes(&choice, evidence);
+    let noise = noise_variance(&choice.fit, evidence);
+    let mut calibration = Calibration {
+        name: points.name.clone(),
+        reading_unit: points.reading_unit,
+        coefficients: coefficients.clone(),
+        range_n: Some([low, high]),
+        capacity_n: points.capacity_n,
+        errors: None,
+        measures: if points.unit.dimension == Dimension::Pressure { Dimension::Pressure } else { Dimension::Force },
+        fit_degrees_of_freedom: (choice.fit.dof > 0).then_some(choice.fit.dof as f64),
+        findings: vec![choice.reason.clone()],
+        cautions: Vec::new(),
+    };
+    let mut errors = Vec::new();
+    if let Some(noise) = noise {
+        if noise.variance > 0.0 {
+            push_directions(&mut errors, ScaleSource::Fit, &(&choice.fit.inverse * noise.variance), &choice.fit);
+        } else {
+            calibration.findings.push(
+                "the points scatter no more than the weights' tolerance makes them: nothing is added for scatter"
+                    .into(),
+            );
+        }
+    }
+    match (&points.tolerance, points.weight_errors) {
+        (Some(Tolerance::Relative(relative)), WeightErrors::Common) => {
+            let size = relative.standard_uncertainty.unwrap_or(relative.value / 3f64.sqrt());
+            errors.push(ErrorDirection { source: ScaleSource::Weights, shape: ErrorShape::Relative(size) });
+        }
+        _ => push_directions(&mut errors, ScaleSource::Weights, &gram(&changes, choice.degree + 1), &choice.fit),
+    }
+    if points.by_mass() {
+        let gravity = points.gravity.standard_uncertainty / points.gravity.value_m_s2;
+        errors.push(ErrorDirection { source: ScaleSource::Gravity, shape: ErrorShape::Relative(gravity) });
+        let buoyancy = weights::buoyancy_relative(points.density_kg_m3);
+        errors.push(ErrorDirection { source: ScaleSource::Buoyancy, shape: ErrorShape::Relative(buoyancy) });
+        calibration.findings.push(format!(
+            "weights times gravity {:.5} m/s2 ({}), less air buoyancy",
+            points.gravity.value_m_s2, points.gravity.source
+        ));
+    }
+    match extrapolation(evidence, &choice, low.abs().max(high.abs())) {
+        Some(direction) => errors.push(direction),
+        None => calibration
+            .cautions
+            .push("too few loads to say how far the curve may bend beyond the heaviest weight".into()),
+    }
+    judge(points, &mut calibration, noise.is_some(), distinct.len());
+    // scatter alone is an answer only where every weight errs on its own: then it shows in the scatter
+    let known = noise.is_some() && !points.weight_errors_stated || points.tolerance.is_some();
+    calibration.errors = known.then_some(errors);
+
+    let found = quality(&forces_n, &readings, &points.listed.iter().map(|point| point.rising).collect::<Vec<_>>());
+    let report_points = points.listed.iter().zip(&forces_n).map(|(listed, force)| {
+        let fitted = value(&coefficients, *force);
+        let residual = listed.reading - fitted;
+        CalibrationPoint {
+            listed: listed.load,
+            force_n: *force,
+            reading: listed.reading,
+            direction: if listed.rising { "up" } else { "down" }.to_string(),
+            fitted,
+            residual,
+            residual_n: residual / slope(&coefficients, *force),
+        }
+    });
+    let report = CalibrationReport {
+        name: points.name.clone(),
+        force_unit: calibration.measures.ucum().to_string(),
+        degree: choice.degree,
+        reason: choice.reason.clone(),
+        coefficients: coefficients.clone(),
+        covariance: choice.fit.residual_variance().map(|variance| choice.fit.covariance(variance)),
+        residual_standard_deviation: choice.fit.residual_variance().map(f64::sqrt),
+        residual_degrees_of_freedom: choice.fit.dof,
+        weights_covariance: points
+            .tolerance
+            .map(|_| unscale_matrix(&gram(&changes, choice.degree + 1), choice.fit.scale_n)),
+        noise_standard_deviation: noise.map(|noise| noise.variance.sqrt()),
+        reading_unit: points.reading_unit.symbol.to_string(),
+        nonlinearity_percent: found.nonlinearity_percent,
+        hysteresis_percent: found.hysteresis_percent,
+        repeatability_percent: found.repeatability_percent,
+        range_n: calibration.range_n,
+        capacity_n: points.capacity_n,
+        gravity_m_s2: points.by_mass().then_some(points.gravity.value_m_s2),
+        points: report_points.collect(),
+        findings: calibration.findings.clone(),
+        cautions: calibration.cautions.clone(),
+    };
+    Ok(Calibrated { calibration, report, files: Vec::new() })
+}
+
+fn chosen(points: &Points, evidence: Evidence<'_>, distinct: &[f64]) -> Result<Choice, Problem> {
+    let too_few = |degree: usize| {
+        Problem::new(format!("{} distinct loads cannot carry a curve of degree {degree}", distinct.len()))
+            .expected(format!("at least {} distinct loads", degree + 1))
+            .remedy("hang more weights, from nothing up to the thrust expected")
+    };
+    match points.degree {
+        None => degree::choose(evidence).ok_or_else(|| too_few(1)),
+        Some(degree) => {
+            if distinct.len() < degree + 1 {
+                return Err(too_few(degree));
+            }
+            let fit = fit::fit(evidence.forces_n, evidence.readings, degree).ok_or_else(|| too_few(degree))?;
+            Ok(Choice { degree, fit, reason: format!("degree {degree}, as asked for under [fit]") })
+        }
+    }
+}
+
+/// What one standard uncertainty of each independent error of the weights does to the scaled coefficients: the forces
+/// are perturbed and the curve is fitted again.
+fn coefficient_changes(choice: &Choice, evidence: Evidence<'_>) -> Vec<DVector<f64>> {
+    let base = choice.fit.coefficients();
+    let rescale = |coefficients: Vec<f64>| {
+        let change = coefficients.iter().zip(&base).enumerate();
+        DVector::from_iterator(
+            base.len(),
+            change.map(|(power, (moved, base))| (moved - base) * choice.fit.scale_n.powi(power as i32)),
+        )
+    };
+    let refit = |shift: &Vec<f64>| {
+        let forces: Vec<f64> = evidence.forces_n.iter().zip(shift).map(|(force, shift)| force + shift).collect();
+        fit::fit(&forces, evidence.readings, choice.degree)
+    };
+    evidence.weight_errors.iter().filter_map(refit).map(|moved| rescale(moved.coefficients())).collect()
+}
+
+/// Covariance that independent changes of one standard uncertainty each add up to.
+fn gram(changes: &[DVector<f64>], terms: usize) -> DMatrix<f64> {
+    changes.iter().fold(DMatrix::zeros(terms, terms), |sum, change| sum + change * change.transpose())
+}
+
+#[derive(Debug, Clone, Copy)]
+struct Noise {
+    variance: f64,
+}
+
+/// Variance of the readings beyond what the weights make; `None` without degrees of freedom.
+///
+/// The residuals hold the errors of the weights too, and those are counted by themselves. So what they are expected to
+/// leave in the sum of squares is taken out of it before it is divided by the degrees of freedom. Where a load was
+/// repeated, the scatter of its own readings, which no weight's error enters, is the least it can be. Without a stated
+/// tolerance all scatter is kept, and the same weight's error in repeated readings is not allowed to average out: the
+/// scatter of the loads' means about the curve counts, when it is the larger.
+fn noise_variance(fit: &Fit, evidence: Evidence<'_>) -> Option<Noise> {
+    let all = fit.residual_variance()?;
+    let terms = fit.scaled.len();
+    let (distinct, places) = levels(evidence.forces_n);
+    let mut sums = vec![(0.0f64, 0.0f64); distinct.len()];
+    for (place, reading) in places.iter().zip(evidence.readings) {
+        sums[*place].0 += reading;
+        sums[*place].1 += 1.0;
+    }
+    let within: f64 = places
+        .iter()
+        .zip(evidence.readings)
+        .map(|(place, reading)| (reading - sums[*place].0 / sums[*place].1).powi(2))
+        .sum();
+    let within_dof = evidence.readings.len() - distinct.len();
+    let repeated = if within_dof >= 2 { within / within_dof as f64 } else { 0.0 };
+    if evidence.weight_errors.is_empty() {
+        let lack_dof = distinct.len().saturating_sub(terms);
+        let lack = if lack_dof >= 2 && within_dof > 0 { (fit.rss - within).max(0.0) / lack_dof as f64 } else { 0.0 };
+        return Some(Noise { variance: all.max(lack) });
+    }
+    let coefficients = fit.coefficients();
+    let expected: f64 = evidence
+        .weight_errors
+        .iter()
+        .filter_map(|shift| {
+            let moved: Vec<f64> = evidence
+                .forces_n
+                .iter()
+                .zip(shift)
+                .map(|(force, shift)| slope(&coefficients, *force) * shift)
+                .collect();
+            fit::fit(evidence.forces_n, &moved, terms - 1).map(|left| left.rss)
+        })
+        .sum();
+    Some(Noise { variance: ((fit.rss - expected) / fit.dof as f64).max(repeated).max(0.0) })
+}
+
+/// Independent directions of a covariance in the scaled coefficients: its eigenvectors, each one standard uncertainty long.
+fn push_directions(errors: &mut Vec<ErrorDirection>, source: ScaleSource, covariance: &DMatrix<f64>, fit: &Fit) {
+    let eigen = covariance.clone().symmetric_eigen();
+    let largest = eigen.eigenvalues.iter().copied().fold(0.0, f64::max);
+    for (at, variance) in eigen.eigenvalues.iter().enumerate() {
+        // below this an eigenvalue is rounding, and may be negative
+        if *variance > 1e-14 * largest {
+            let direction = eigen.eigenvectors.column(at) * variance.sqrt();
+            errors.push(ErrorDirection { source, shape: ErrorShape::Coefficients(fit.unscale(&direction)) });
+        }
+    }
+}
+
+/// What the next degree could add beyond the heaviest weight: its coefficient as the points give it, and its standard
+/// error, as one standard uncertainty; `None` where the points cannot carry that degree.
+fn extrapolation(evidence: Evidence<'_>, choice: &Choice, from_n: f64) -> Option<ErrorDirection> {
+    let degree = choice.degree + 1;
+    let next = fit::fit(evidence.forces_n, evidence.readings, degree)?;
+    let power = next.scale_n.powi(degree as i32);
+    let coefficient = next.scaled[degree] / power;
+    let error =
+        next.residual_variance().map_or(0.0, |variance| (variance * next.inverse[(degree, degree)]).sqrt()) / power;
+    let per_newton = slope(&choice.fit.coefficients(), from_n).abs();
+    let coefficient = coefficient.hypot(error) / per_newton;
+    coefficient.is_finite().then_some(ErrorDirection {
+        source: ScaleSource::Extrapolation,
+        shape: ErrorShape::Beyond { from_n, degree, coefficient },
+    })
+}
+
+/// What makes the calibration less than it should be.
+fn judge(points: &Points, calibration: &mut Calibration, has_scatter: bool, loads: usize) {
+    let cautions = &mut calibration.cautions;
+    if !has_scatter {
+        cautions.push(
+            "as many coefficients as points: nothing shows how well the readings repeat or how straight the cell is"
+                .into(),
+        );
+    } else if loads < 3 {
+        cautions.push("two loads only: nothing shows whether the cell is straight between them".into());
+    }
+    if points.tolerance.is_none() && points.by_mass() {
+        cautions.push(if points.weight_errors_stated {
+            "no tolerance is stated for the weights: their shared error, and so the scale error, is not known".into()
+        } else {
+            "no tolerance is stated for the weights: only what shows in the scatter of the points is counted"
+                .to_string()
+        });
+    }
+    if points.by_mass() && points.gravity.standard_uncertainty > 5e-4 * points.gravity.value_m_s2 {
+        cautions.push(
+            "gravity where the weights hung is poorly known: give gravity, or latitude and height, under [site]".into(),
+        );
+    }
+}

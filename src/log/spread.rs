@@ -1,0 +1,258 @@
+//! Stamps that repeat: a coarse clock, whose samples are spread, told from records written twice, which are dropped.
+
+/// What became of repeated stamps.
+#[derive(Debug, Default, PartialEq)]
+pub struct Repeats {
+    /// Records written twice (indices of the second copies).
+    pub duplicates: Vec<usize>,
+    /// Records whose stamp was moved off one they shared.
+    pub spread: usize,
+    /// The clock ticks more slowly than samples come.
+    pub coarse: bool,
+}
+
+/// A share of repeated stamps above which the clock, not the writing, repeats.
+const COARSE_SHARE: f64 = 0.2;
+
+/// Finds duplicates and spreads shared stamps. `time` does not fall; `same_line[i]`: record i is written exactly as record i-1;
+/// `unchanged(i)`: its readings are those of record i-1; `place`: a number that counts records, dropped ones included;
+/// `step`: the usual step of stamps that move. Duplicates keep their stamp and are for the caller to remove.
+pub fn resolve_repeats(
+    time: &mut [f64],
+    same_line: &[bool],
+    unchanged: &dyn Fn(usize) -> bool,
+    place: &[f64],
+    step: f64,
+) -> Repeats {
+    let mut out = Repeats::default();
+    let count = time.len();
+    let repeats: Vec<usize> = (1..count).filter(|&index| time[index] == time[index - 1]).collect();
+    if repeats.is_empty() {
+        return out;
+    }
+    let identical = repeats.iter().filter(|&&index| same_line[index]).count();
+    let fresh = (1..count).filter(|&index| time[index] != time[index - 1]);
+    let (still, moving) =
+        fresh.fold((0usize, 0usize), |(still, all), index| (still + usize::from(unchanged(index)), all + 1));
+    // Everything written twice: the copies agree although the readings change from stamp to stamp.
+    let twice = identical * 20 >= repeats.len() * 19 && still * 2 < moving;
+    if !twice && repeats.len() as f64 > COARSE_SHARE * (count - 1) as f64 {
+        out.coarse = true;
+    } else {
+        for &index in &repeats {
+            // A hole beside it shows that the sample is a true one with a late or early stamp.
+            let first = index.saturating_sub(2);
+            let last = (index + 1).min(count - 1);
+            let hole = time[last] - time[first] >= ((last - first) as f64 - 0.5) * step;
+            if same_line[index] && (twice || !hole) {
+                out.duplicates.push(index);
+            }
+        }
+    }
+    let mut kept: Vec<usize> = Vec::with_capacity(count - out.duplicates.len());
+    let mut duplicates = out.duplicates.iter().copied().peekable();
+    kept.extend((0..count).filter(|&index| duplicates.next_if_eq(&index).is_none()));
+    let stamps: Vec<f64> = kept.iter().map(|&index| time[index]).collect();
+    let places: Vec<f64> = kept.iter().map(|&index| place[index]).collect();
+    let moved = if out.coarse { spread_all(&stamps, &places, step) } else { spread_locally(&stamps, step) };
+    for ((&index, was), now) in kept.iter().zip(&stamps).zip(&moved) {
+        out.spread += usize::from(was != now);
+        time[index] = *now;
+    }
+    out
+}
+
+/// Runs of equal stamps as `(start, end)`.
+fn runs(stamps: &[f64]) -> Vec<(usize, usize)> {
+    let mut out = Vec::new();
+    let mut start = 0;
+    for index in 1..=stamps.len() {
+        if index == stamps.len() || stamps[index] != stamps[start] {
+            out.push((start, index));
+            start = index;
+        }
+    }
+    out
+}
+
+/// Each run evenly over the interval to the next stamp; the first and the last run may be cut and take their neighbour's spacing.
+fn spread_locally(stamps: &[f64], step: f64) -> Vec<f64> {
+    let mut out = stamps.to_vec();
+    let runs = runs(stamps);
+    for (number, &(start, end)) in runs.iter().enumerate() {
+        let length = end - start;
+        if length == 1 {
+            continue;
+        }
+        let next = runs.get(number + 1).map(|run| (stamps[run.0], run.1 - run.0));
+        let previous = number.checked_sub(1).and_then(|at| runs.get(at)).map(|run| run.1 - run.0);
+        match (previous, next) {
+            // Cut at its start: its samples end where the next stamp begins.
+            (None, Some((stamp, neighbour))) if stamp - stamps[start] <= 1.6 * step && neighbour > length => {
+                let spacing = step / neighbour as f64;
+                for index in start..end {
+                    out[index] = stamp - (end - index) as f64 * spacing;
+                }
+            }
+            (previous, next) => {
+                let span = next.map_or(step, |(stamp, _)| (stamp - stamps[start]).min(step * 1.6));
+                let divisor = if next.is_none() { length.max(previous.unwrap_or(0)) } else { length };
+                for index in start..end {
+                    out[index] = stamps[start] + span * (index - start) as f64 / divisor as f64;
+                }
+            }
+        }
+    }
+    out
+}
+
+/// A coarse clock over an even sampler: a straight line through the stamps of each unbroken stretch, where all stamps lie
+/// within one tick of it; else locally.
+fn spread_all(stamps: &[f64], places: &[f64], step: f64) -> Vec<f64> {
+    let mut out = spread_locally(stamps, step);
+    let mut start = 0;
+    for end in 1..=stamps.len() {
+        if end < stamps.len() && stamps[end] - stamps[end - 1] <= 1.6 * step {
+            continue;
+        }
+        if let Some(line) = straight(&stamps[start..end], &places[start..end], step) {
+            let rises = start == 0 || line[0] > out[start - 1];
+            let ends_before = end == stamps.len() || line.last().is_some_and(|last| *last < out[end]);
+            if rises && ends_before {
+                out[start..end].copy_from_slice(&line);
+            }
+        }
+        start = end;
+    }
+    out
+}
+
+/// Least-squares line of stamp over place, if the stamps scatter about it by no more than a tick.
+fn straight(stamps: &[f64], places: &[f64], tick: f64) -> Option<Vec<f64>> {
+    let ticks = stamps.windows(2).filter(|pair| pair[1] != pair[0]).count();
+    if ticks < 3 {
+        return None;
+    }
+    let count = stamps.len() as f64;
+    let mean_place = places.iter().sum::<f64>() / count;
+    let mean_stamp = stamps.iter().map(|stamp| stamp - stamps[0]).sum::<f64>() / count + stamps[0];
+    let (mut cross, mut square) = (0.0, 0.0);
+    for (stamp, place) in stamps.iter().zip(places) {
+        cross += (stamp - mean_stamp) * (place - mean_place);
+        square += (place - mean_place).powi(2);
+    }
+    let slope = cross / square;
+    if !(slope > 0.0) {
+        return None;
+    }
+    let (mut low, mut high) = (f64::INFINITY, f64::NEG_INFINITY);
+    let mut line = Vec::with_capacity(stamps.len());
+    for (stamp, place) in stamps.iter().zip(places) {
+        let value = mean_stamp + slope * (place - mean_place);
+        low = low.min(stamp - value);
+        high = high.max(stamp - value);
+        line.push(value);
+    }
+    // Rounding down to a tick scatters by just under one; a tenth more for the line's own error.
+    (high - low <= 1.1 * tick && line.windows(2).all(|pair| pair[1] > pair[0])).then_some(line)
+}
+
+/// The grid the stamps stand on, where it is coarse against the steps; 0 where it is fine or does not show.
+pub fn clock_grid(time: &[f64], step: f64) -> f64 {
+    let stride = (time.len() / 2000).max(1);
+    let mut steps: Vec<f64> = (1..time.len()).step_by(stride).map(|index| time[index] - time[index - 1]).collect();
+    steps.retain(|value| *value > 0.0 && *value < 20.0 * step);
+    if steps.len() < 4 {
+        return 0.0;
+    }
+    steps.sort_by(f64::total_cmp);
+    let tolerance = 1e-6 * step;
+    let mut grid = f64::INFINITY;
+    for pair in steps.windows(2) {
+        let difference = pair[1] - pair[0];
+        if difference > tolerance {
+            grid = grid.min(difference);
+        }
+    }
+    // Jitter of a fine clock has no grid that shows; a grid below a fiftieth of the step does not matter.
+    if !(grid >= 0.02 * step && grid < 20.0 * step) {
+        return 0.0;
+    }
+    let on_grid = steps.iter().filter(|value| (*value / grid - (*value / grid).round()).abs() < 0.03).count();
+    if on_grid * 20 >= steps.len() * 19 { grid } else { 0.0 }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn resolve(stamps: &[f64], values: &[f64]) -> (Vec<f64>, Repeats) {
+        let mut time = stamps.to_vec();
+        let same: Vec<bool> = (0..stamps.len())
+            .map(|index| index > 0 && stamps[index] == stamps[index - 1] && values[index] == values[index - 1])
+            .collect();
+        let places: Vec<f64> = (0..stamps.len()).map(|index| index as f64).collect();
+        let step = super::super::stamps::usual_step(stamps).unwrap();
+        let repeats = resolve_repeats(&mut time, &same, &|index| values[index] == values[index - 1], &places, step);
+        (time, repeats)
+    }
+
+    #[test]
+    fn coarse_clock_comes_back_even() {
+        // 80 Hz stamped in tenths of a second, readings that never change.
+        let stamps: Vec<f64> = (0..400).map(|index| (f64::from(index) * 0.125).floor()).collect();
+        let (time, repeats) = resolve(&stamps, &vec![5.0; 400]);
+        assert!(repeats.coarse && repeats.duplicates.is_empty());
+        // The slope of the line errs by far less than one sample over the record.
+        for pair in time.windows(2) {
+            assert!((pair[1] - pair[0] - 0.125).abs() < 1e-3, "{pair:?}");
+        }
+    }
+
+    #[test]
+    fn uneven_sampler_under_a_coarse_clock_is_spread_between_ticks() {
+        let stamps = [0.0, 0.0, 0.0, 0.0, 1.0, 2.0, 2.0, 2.0, 2.0, 2.0, 2.0, 2.0, 2.0, 3.0, 4.0, 4.0];
+        let values: Vec<f64> = (0..16).map(f64::from).collect();
+        let (time, repeats) = resolve(&stamps, &values);
+        assert!(repeats.coarse);
+        assert_eq!(time[5..7], [2.0, 2.125]);
+        assert!(time.windows(2).all(|pair| pair[1] > pair[0]));
+    }
+
+    #[test]
+    fn a_record_written_twice_is_a_duplicate() {
+        let mut stamps: Vec<f64> = (0..50).map(|index| f64::from(index) * 10.0).collect();
+        let mut values: Vec<f64> = (0..50).map(f64::from).collect();
+        stamps.insert(21, 200.0);
+        values.insert(21, 20.0);
+        let (_, repeats) = resolve(&stamps, &values);
+        assert_eq!(repeats.duplicates, vec![21]);
+        assert!(!repeats.coarse);
+    }
+
+    #[test]
+    fn a_late_stamp_in_a_quiet_record_is_a_sample_not_a_duplicate() {
+        let mut stamps: Vec<f64> = (0..50).map(f64::from).collect();
+        stamps[21] = 20.0;
+        let (time, repeats) = resolve(&stamps, &[7.0; 50]);
+        assert!(repeats.duplicates.is_empty());
+        assert!(time.windows(2).all(|pair| pair[1] > pair[0]));
+    }
+
+    #[test]
+    fn every_record_written_twice() {
+        let stamps: Vec<f64> = (0..100).map(|index| f64::from(index / 2)).collect();
+        let values: Vec<f64> = (0..100).map(|index| f64::from((index / 2 * 37) % 11)).collect();
+        let (_, repeats) = resolve(&stamps, &values);
+        assert_eq!(repeats.duplicates.len(), 50);
+    }
+
+    #[test]
+    fn grids() {
+        let milliseconds: Vec<f64> = (0..300).map(|index| (f64::from(index) * 3.333).floor()).collect();
+        assert_eq!(clock_grid(&milliseconds, 3.0), 1.0);
+        let microseconds: Vec<f64> =
+            milliseconds.iter().enumerate().map(|(i, v)| v * 1000.0 + (i * 7 % 13) as f64).collect();
+        assert_eq!(clock_grid(&microseconds, 3000.0), 0.0);
+    }
+}

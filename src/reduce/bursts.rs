@@ -1,0 +1,78 @@
+//! The burn among the bursts, and what the others are.
+
+use crate::burn::events::{Event, Segmentation};
+use crate::firing::BurstKind;
+use crate::problem::Problem;
+use crate::run::{CheckLoadSpec, ReductionSpec};
+
+/// Shortest stretch that an impact of the stand may ring and still be called one, s.
+const KNOCK_S: f64 = 0.6;
+/// A burst of less than this share of the burn's peak is not told apart from the record's own unrest.
+pub const LEAST_PEAK: f64 = 0.01;
+
+/// Whether the burst is a known weight laid on the stand.
+fn is_check_load(event: &Event, time_s: &[f64], loads: &[CheckLoadSpec]) -> bool {
+    let (start, end) = (time_s[event.start], time_s[event.end - 1]);
+    loads.iter().any(|l| start < l.to_s && end > l.from_s)
+}
+
+/// Index of the burn: the burst a person named, else that with the largest impulse, never merely the largest peak.
+pub fn choose(
+    segmentation: &Segmentation,
+    time_s: &[f64],
+    loads: &[CheckLoadSpec],
+    reduction: &ReductionSpec,
+) -> Result<usize, Problem> {
+    let events = &segmentation.events;
+    if let Some(number) = reduction.burst {
+        if number == 0 || number > events.len() {
+            return Err(Problem::new(format!("[reduction] burst = {number}, but the log holds {} bursts", events.len()))
+                .expected(format!("a number from 1 to {}", events.len().max(1)))
+                .remedy("run `burntally inspect` on the log to see its bursts"));
+        }
+        return Ok(number - 1);
+    }
+    if let (Some(start), Some(end)) = (reduction.burn_start_s, reduction.burn_end_s)
+        && let Some(i) =
+            events.iter().position(|e| time_s[e.start] < end && time_s[e.end - 1] > start && e.impulse != 0.0)
+    {
+        return Ok(i);
+    }
+    (0..events.len())
+        .filter(|&i| !is_check_load(&events[i], time_s, loads))
+        .max_by(|&a, &b| events[a].impulse.abs().total_cmp(&events[b].impulse.abs()))
+        .ok_or_else(|| {
+            Problem::new("no burst found: the force channel stays within its noise from start to end")
+                .expected("a stretch in which the force rises out of the quiet record")
+                .remedy("check that `column` in [[channel]] names the load cell, or look with `burntally inspect`")
+        })
+}
+
+/// What a burst other than the burn is; `sign` is that of thrust.
+pub fn kind(event: &Event, burn: &Event, time_s: &[f64], loads: &[CheckLoadSpec], sign: f64) -> BurstKind {
+    if event.start == burn.start {
+        return BurstKind::Burn;
+    }
+    if is_check_load(event, time_s, loads) {
+        return BurstKind::Other;
+    }
+    let duration = time_s[event.end - 1] - time_s[event.start];
+    let (peak, impulse) = (event.peak * sign, event.impulse * sign);
+    // An impact swings through zero and leaves little impulse for its height, or stands far above the burn for a moment.
+    let swings = impulse.abs() < 0.25 * peak.abs() * duration;
+    if event.start > burn.start {
+        if duration < KNOCK_S && (peak.abs() > 1.2 * burn.peak.abs() || swings) {
+            BurstKind::Knock
+        } else if duration < 1.0 && peak.abs() > 0.02 * burn.peak.abs() {
+            BurstKind::Ejection
+        } else {
+            BurstKind::Other
+        }
+    } else if peak > 0.0 && impulse > 0.0 && !(duration < 0.15 && swings) {
+        BurstKind::Chuff
+    } else if duration < KNOCK_S {
+        BurstKind::Knock
+    } else {
+        BurstKind::Other
+    }
+}

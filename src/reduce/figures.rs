@@ -1,0 +1,592 @@
+//! Every figure of the firing with its uncertainty.
+
+use super::curve::{self, Curve};
+use super::zero::{self, Zero};
+use super::{Record, force};
+use crate::burn::crossings::{self, Crossing};
+use crate::firing::{BudgetLine, BurnTimes, Figure, MotorClass, Quantities};
+use crate::measure::{class, integral};
+use crate::run::Role;
+use crate::uncertainty::effects::{Budgets, Effect, Propagated};
+use std::collections::BTreeMap;
+
+/// Burn time runs between crossings of this share of peak thrust (as NFPA 1125 tests do; read second-hand, see
+/// tests/reference/item05).
+pub const BURN_LEVEL: f64 = 0.05;
+/// Action time between crossings of this share (Sutton and Biblarz, Rocket Propulsion Elements; from memory).
+pub const ACTION_LEVEL: f64 = 0.10;
+/// Rise time runs from the action level up to this share of peak.
+const RISEN_LEVEL: f64 = 0.90;
+/// Initial thrust is the mean over the first part of the burn, s (common practice, no source).
+const INITIAL_S: f64 = 0.5;
+/// Standard gravity, m/s² (exact; 3rd CGPM, 1901).
+pub const STANDARD_GRAVITY_M_S2: f64 = 9.80665;
+/// Limits of the logger's clock where run.toml states none: a plain crystal with its temperature (from memory).
+pub const CRYSTAL_CLOCK: f64 = 1e-4;
+/// Thrust counts as measurable down to this share of peak where the noise allows.
+const MEASURABLE: f64 = 0.002;
+
+/// All that is read from the curve.
+pub struct Figures {
+    pub quantities: Quantities,
+    pub times: BurnTimes,
+    pub class: Option<MotorClass>,
+    pub budget: BTreeMap<String, Vec<BudgetLine>>,
+    pub findings: Vec<String>,
+    pub total_impulse: f64,
+    pub peak_n: f64,
+    pub scale_known: bool,
+    /// Standard uncertainty of scale relative to force, of the zero in N, and of the conditioned curve in N.
+    relative_u: f64,
+    zero_u_n: f64,
+    noise_u_n: f64,
+    /// A start or an end that lies outside the record.
+    pub start_missing: bool,
+    pub end_extrapolated: bool,
+    pub end_missing: bool,
+    /// Mass that the weight shift speaks for, where it was the source.
+    pub mass_from_shift: bool,
+}
+
+impl Figures {
+    /// Standard uncertainty of a thrust value, N.
+    pub fn thrust_u_n(&self, _time_s: f64, thrust_n: f64) -> f64 {
+        ((self.relative_u * thrust_n).powi(2) + self.zero_u_n.powi(2) + self.noise_u_n.powi(2)).sqrt()
+    }
+}
+
+/// Crossings of one level at both ends of the burn, and where they came from.
+struct Ends {
+    start: Crossing,
+    end: Crossing,
+    start_missing: bool,
+    end_extrapolated: bool,
+    end_missing: bool,
+}
+
+fn ends(curve: &Curve, level_n: f64, override_s: [Option<f64>; 2]) -> Ends {
+    let (t, f) = (&curve.time_s, &curve.thrust_n);
+    let from = t.partition_point(|x| *x < curve.burst_s[0] - 0.25).saturating_sub(1);
+    let to = (t.partition_point(|x| *x <= curve.burst_s[1]) + 2).min(t.len());
+    let (t, f) = (&t[from..to], &f[from..to]);
+    let exact = |time_s: f64| Crossing { time_s, sampling_half_width_s: 0.0, slope: f64::INFINITY };
+    let (mut start_missing, mut end_extrapolated, mut end_missing) = (false, false, false);
+    let share = level_n / curve.peak.thrust_n;
+    let mut start = crossings::first_up(t, f, level_n).unwrap_or_else(|| {
+        start_missing = true;
+        exact(t[0])
+    });
+    let mut end = crossings::last_down(t, f, level_n).unwrap_or_else(|| {
+        let last = t[t.len() - 1];
+        match &curve.tail {
+            Some(tail) => {
+                end_extrapolated = true;
+                let beyond = tail.time_to(level_n);
+                // How far an extrapolated instant may be off: as far as the impulse beyond the record, relatively.
+                let share = tail.impulse_u / tail.impulse.max(f64::MIN_POSITIVE);
+                Crossing {
+                    time_s: last + beyond,
+                    sampling_half_width_s: beyond * share * 3f64.sqrt(),
+                    slope: level_n / tail.time_constant_s,
+                }
+            }
+            None => {
+                end_missing = true;
+                exact(last)
+            }
+        }
+    });
+    if let Some(edge) = &curve.rise {
+        let (time_s, half) = curve::edge_time(curve, edge, share);
+        start = Crossing { time_s, sampling_half_width_s: half, slope: start.slope };
+    }
+    if let Some(edge) = &curve.fall {
+        let (time_s, half) = curve::edge_time(curve, edge, share);
+        end = Crossing { time_s, sampling_half_width_s: half, slope: end.slope };
+    }
+    if let Some(s) = override_s[0] {
+        (start, start_missing) = (exact(s), false);
+    }
+    if let Some(s) = override_s[1] {
+        (end, end_missing, end_extrapolated) = (exact(s), false, false);
+    }
+    Ends { start, end, start_missing, end_extrapolated, end_missing }
+}
+
+/// First and last measurable thrust: where the curve leaves and meets what noise leaves in it.
+fn thrust_limits(curve: &Curve, ends: &Ends) -> (f64, f64) {
+    let (t, f) = (&curve.time_s, &curve.thrust_n);
+    let errors = &curve.conditioned.standard_error_n;
+    let settled = {
+        let mut e = errors.clone();
+        let k = e.len() / 4;
+        *e.select_nth_unstable_by(k, f64::total_cmp).1
+    };
+    let level = (3.0 * settled).clamp(MEASURABLE * curve.peak.thrust_n, 0.8 * BURN_LEVEL * curve.peak.thrust_n);
+    let mut i = t.partition_point(|x| *x < ends.start.time_s).min(t.len() - 1);
+    while i > 0 && f[i] > level {
+        i -= 1;
+    }
+    let mut k = t.partition_point(|x| *x <= ends.end.time_s).saturating_sub(1);
+    while k + 1 < t.len() && f[k] > level {
+        k += 1;
+    }
+    let mut start = t[i].min(ends.start.time_s);
+    if let Some(edge) = &curve.rise {
+        start = curve::edge_time(curve, edge, 0.0).0;
+    }
+    let end = match &curve.tail {
+        // Down to what the record's own noise would still show.
+        Some(tail) => t[t.len() - 1] + tail.time_to(level).max(curve.conditioned.interval_s),
+        None => match &curve.fall {
+            Some(edge) => curve::edge_time(curve, edge, 0.0).0,
+            None => t[k].max(ends.end.time_s),
+        },
+    };
+    (start, end)
+}
+
+pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
+    let run = &record.inputs.run;
+    let mut findings = Vec::new();
+    let (t, f) = (&record.time_s[zero.window.clone()], &zero.thrust_n);
+    let inside = zero.burst.start - zero.window.start..zero.burst.end - zero.window.start;
+    let (bt, bf) = (&t[inside.clone()], &f[inside.clone()]);
+
+    let peak_n = curve.peak.thrust_n;
+    let burn = ends(curve, BURN_LEVEL * peak_n, [run.reduction.burn_start_s, run.reduction.burn_end_s]);
+    let action = ends(curve, ACTION_LEVEL * peak_n, [None, None]);
+    let (thrust_start_s, thrust_end_s) = thrust_limits(curve, &burn);
+    let (start_s, end_s) = (burn.start.time_s, burn.end.time_s);
+    let times = BurnTimes {
+        thrust_start_s: thrust_start_s.min(start_s),
+        start_s,
+        end_s,
+        thrust_end_s: thrust_end_s.max(end_s),
+    };
+
+    let tail_impulse = curve.tail.map_or(0.0, |tail| tail.impulse);
+    let total_impulse = integral::trapezoid(bt, bf) + tail_impulse;
+    let last_s = bt[bt.len() - 1];
+    let beyond = curve.tail.map_or(0.0, |tail| {
+        if end_s > last_s { tail.impulse - tail.thrust_at(end_s - last_s) * tail.time_constant_s } else { 0.0 }
+    });
+    // Edges that a converter's averaging hides are drawn in the curve; between them the samples themselves are summed.
+    let burn_impulse = if curve.rise.is_some() || curve.fall.is_some() {
+        integral::between(&curve.time_s, &curve.thrust_n, start_s, end_s)
+    } else {
+        integral::between(bt, bf, start_s, end_s)
+    } + beyond;
+    let burn_time = end_s - start_s;
+    let action_time = action.end.time_s - action.start.time_s;
+    let initial_s = INITIAL_S.min(burn_time);
+    let initial = integral::between(&curve.time_s, &curve.thrust_n, start_s, start_s + initial_s) / initial_s;
+    let risen = {
+        let from = curve.time_s.partition_point(|x| *x < curve.burst_s[0] - 0.25).saturating_sub(1);
+        crossings::first_up(&curve.time_s[from..], &curve.thrust_n[from..], RISEN_LEVEL * peak_n)
+    };
+    let rise_time = risen.filter(|r| r.time_s > action.start.time_s).map(|r| r.time_s - action.start.time_s);
+    let delay = ignition(record).map(|(at, u)| (burn.start.time_s - at, u));
+
+    let mass = propellant_mass(record, zero, &mut findings);
+    let work = Work { record, zero, curve, bt, bf, burn: &burn, action: &action, total_impulse, burn_impulse, burn_time,
+        action_time, initial, initial_s, rise_time, delay: delay.map(|d| d.0) };
+    let (mut effects, scale_known) = work.effects(delay.map(|d| d.1), mass.as_ref().map(|m| m.1));
+    effects.retain(|e| *e != Effect::of(e.source.clone()));
+    let relative_u = Propagated::collect(
+        &effects.iter().filter(|e| is_scale(&e.source)).cloned().collect::<Vec<_>>(),
+        |e| e.peak_thrust,
+    )
+    .standard_uncertainty()
+        / peak_n;
+
+    let mut b = Budgets::default();
+    let mut fig = |name: &str, value: f64, unit: &str, of: &dyn Fn(&Effect) -> f64, known: bool| -> Figure {
+        b.figure(name, value, unit, &Propagated::collect(&effects, of), known)
+    };
+    let k = scale_known;
+    let average = burn_impulse / burn_time;
+    let mut q = Quantities {
+        total_impulse: Some(fig("total_impulse", total_impulse, "N.s", &|e| e.total_impulse, k)),
+        burn_impulse: Some(fig("burn_impulse", burn_impulse, "N.s", &|e| e.burn_impulse, k)),
+        burn_time: Some(fig("burn_time", burn_time, "s", &|e| e.burn_time, true)),
+        action_time: Some(fig("action_time", action_time, "s", &|e| e.action_time, true)),
+        average_thrust: Some(fig(
+            "average_thrust",
+            average,
+            "N",
+            &|e| average * (e.burn_impulse / burn_impulse - e.burn_time / burn_time),
+            k,
+        )),
+        peak_thrust: Some(fig("peak_thrust", peak_n, "N", &|e| e.peak_thrust, k)),
+        initial_thrust: Some(fig("initial_thrust", initial, "N", &|e| e.initial_thrust, k)),
+        rise_time: rise_time.map(|v| fig("rise_time", v, "s", &|e| e.rise_time, true)),
+        ignition_delay: delay.map(|(v, _)| fig("ignition_delay", v, "s", &|e| e.ignition_delay, true)),
+        extrapolated_impulse: curve
+            .tail
+            .map(|tail| fig("extrapolated_impulse", tail.impulse, "N.s", &|e| e.extrapolated_impulse, k)),
+        ..Quantities::default()
+    };
+    let mass_from_shift = mass.as_ref().is_some_and(|m| m.2.is_some());
+    if let Some((kg, u_kg, source)) = &mass {
+        let known = u_kg.is_some() && (source.is_none() || k);
+        let mut figure = fig("propellant_mass", *kg, "kg", &|e| e.propellant_mass, known);
+        figure.source = source.clone();
+        let ve = total_impulse / kg;
+        let relative = move |e: &Effect| e.total_impulse / total_impulse - e.propellant_mass / kg;
+        let known = k && u_kg.is_some();
+        q.specific_impulse = Some(fig(
+            "specific_impulse",
+            ve / STANDARD_GRAVITY_M_S2,
+            "s",
+            &|e| ve / STANDARD_GRAVITY_M_S2 * relative(e),
+            known,
+        ));
+        q.effective_exhaust_velocity =
+            Some(fig("effective_exhaust_velocity", ve, "m/s", &|e| ve * relative(e), known));
+        q.propellant_mass = Some(figure);
+    }
+    if let (Some(before), Some(after)) = (run.motor.mass_before_kg, run.motor.mass_after_kg) {
+        let u = before.standard_uncertainty.zip(after.standard_uncertainty).map(|(a, b)| a.hypot(b));
+        let propagated = Propagated { lines: u.map(|u| ("weighing".to_string(), u)).into_iter().collect() };
+        q.expelled_mass =
+            Some(b.figure("expelled_mass", before.value - after.value, "kg", &propagated, u.is_some()));
+    }
+    if !clipped_in_burn(record).is_empty() {
+        for figure in [&mut q.total_impulse, &mut q.burn_impulse, &mut q.average_thrust, &mut q.peak_thrust,
+            &mut q.specific_impulse, &mut q.effective_exhaust_velocity].into_iter().flatten() {
+            figure.bound = Some("lower".to_string());
+        }
+    }
+    let impulse_u = q.total_impulse.as_ref().and_then(|f| f.standard_uncertainty);
+    let zero_u_n = [zero.baseline.before, zero.baseline.after]
+        .iter()
+        .flatten()
+        .map(|q| q.level_u)
+        .fold(0.0, f64::max)
+        .hypot(zero.drift_u_n);
+    Figures {
+        class: class::classify(total_impulse, impulse_u, average),
+        quantities: q,
+        times,
+        budget: b.0,
+        findings,
+        total_impulse,
+        peak_n,
+        scale_known,
+        relative_u,
+        zero_u_n,
+        noise_u_n: curve.peak.noise_u_n,
+        start_missing: burn.start_missing,
+        end_extrapolated: burn.end_extrapolated,
+        end_missing: burn.end_missing,
+        mass_from_shift,
+    }
+}
+
+/// Stretches of clipped samples that touch the burst.
+pub fn clipped_in_burn(record: &Record<'_>) -> Vec<std::ops::Range<usize>> {
+    record.clipped.iter().filter(|r| r.start < record.burn.end && r.end > record.burn.start).cloned().collect()
+}
+
+const SCALE_SOURCES: [&str; 7] =
+    ["calibration fit", "weights", "gravity", "air buoyancy", "beyond the heaviest weight", "stated accuracy", "force ratio"];
+
+fn is_scale(source: &str) -> bool {
+    SCALE_SOURCES.contains(&source)
+}
+
+/// Instant of the ignition signal and its standard uncertainty, s.
+fn ignition(record: &Record<'_>) -> Option<(f64, f64)> {
+    let spec = record.inputs.run.channels.iter().find(|c| c.role == Role::Ignition)?;
+    let values = &force::column(record.inputs, &spec.column).ok()?.values;
+    let time_s = &record.inputs.log.time_s;
+    let (low, high) = values.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(*v), h.max(*v)));
+    // The signal may rise or fall when the current flows; its level at the start of the record is the resting one.
+    let (rest, middle) = (*values.first()?, (low + high) / 2.0);
+    let i = values.iter().position(|v| (*v - middle) * (rest - middle) <= 0.0)?;
+    let k = i.checked_sub(1)?;
+    // A digital signal changes somewhere between two samples.
+    Some(((time_s[k] + time_s[i]) / 2.0, (time_s[i] - time_s[k]) / 12f64.sqrt()))
+}
+
+/// Propellant mass in kg, its standard uncertainty, and its source where it was not weighed.
+fn propellant_mass(
+    record: &Record<'_>,
+    zero: &Zero,
+    findings: &mut Vec<String>,
+) -> Option<(f64, Option<f64>, Option<String>)> {
+    if let Some(mass) = record.inputs.run.motor.propellant_mass_kg {
+        return Some((mass.value, mass.standard_uncertainty, None));
+    }
+    let (kg, u) = zero.shift_mass_kg?;
+    findings.push(format!(
+        "propellant mass {kg:.4} kg from the weight that left the stand: not independent of the cell, and drift of the zero counts as mass"
+    ));
+    Some((kg, Some(u), Some("weight shift".to_string())))
+}
+
+/// What the effects are computed from.
+struct Work<'a> {
+    record: &'a Record<'a>,
+    zero: &'a Zero,
+    curve: &'a Curve,
+    bt: &'a [f64],
+    bf: &'a [f64],
+    burn: &'a Ends,
+    action: &'a Ends,
+    total_impulse: f64,
+    burn_impulse: f64,
+    burn_time: f64,
+    action_time: f64,
+    initial: f64,
+    initial_s: f64,
+    rise_time: Option<f64>,
+    delay: Option<f64>,
+}
+
+impl Work<'_> {
+    /// All effects, and whether the error of the scale is known.
+    fn effects(&self, delay_u: Option<f64>, mass_u: Option<Option<f64>>) -> (Vec<Effect>, bool) {
+        let (mut effects, known) = self.scale();
+        effects.extend(self.zero());
+        effects.extend(self.noise());
+        effects.extend(self.ends(delay_u));
+        effects.push(self.clock());
+        if let Some(Some(u)) = mass_u
+            && self.record.inputs.run.motor.propellant_mass_kg.is_some()
+        {
+            effects.push(Effect { propellant_mass: u, ..Effect::of("propellant mass") });
+        }
+        if let Some(tail) = self.curve.tail {
+            effects.push(Effect {
+                total_impulse: tail.impulse_u,
+                extrapolated_impulse: tail.impulse_u,
+                burn_impulse: if self.burn.end_extrapolated { tail.impulse_u } else { 0.0 },
+                ..Effect::of("tail beyond the record")
+            });
+        }
+        (effects, known)
+    }
+
+    /// Errors of the force scale: each independent direction of each channel's calibration, and the force ratio.
+    fn scale(&self) -> (Vec<Effect>, bool) {
+        use crate::calibration::ScaleSource;
+        let record = self.record;
+        let mut effects = Vec::new();
+        let mut known = true;
+        let peak_index = self.bt.partition_point(|t| *t < self.curve.peak.time_s).min(self.bt.len() - 1);
+        for channel in &record.channels {
+            let Some(errors) = &channel.calibration.errors else {
+                known = false;
+                continue;
+            };
+            let force = &channel.force_n[self.zero.burst.clone()];
+            let rest = self.rest_of(channel);
+            for direction in errors {
+                let scale = record.sign / record.force_ratio;
+                let at_rest = channel.calibration.force_error_n(direction, rest);
+                let change: Vec<f64> = force
+                    .iter()
+                    .map(|f| scale * (channel.calibration.force_error_n(direction, *f) - at_rest))
+                    .collect();
+                let mass_share = match (&self.zero.shift_mass_kg, record.inputs.run.motor.propellant_mass_kg) {
+                    (Some((kg, _)), None) => {
+                        let span = force[peak_index] - rest;
+                        let relative = if span != 0.0 { change[peak_index] * record.force_ratio / span.abs() } else { 0.0 };
+                        kg * relative
+                    }
+                    _ => 0.0,
+                };
+                effects.push(Effect {
+                    total_impulse: integral::trapezoid(self.bt, &change),
+                    burn_impulse: integral::between(self.bt, &change, self.burn.start.time_s, self.burn.end.time_s),
+                    peak_thrust: change[peak_index],
+                    initial_thrust: integral::between(
+                        self.bt,
+                        &change,
+                        self.burn.start.time_s,
+                        self.burn.start.time_s + self.initial_s,
+                    ) / self.initial_s,
+                    propellant_mass: mass_share,
+                    ..Effect::of(match direction.source {
+                        ScaleSource::Fit => "calibration fit",
+                        ScaleSource::Weights => "weights",
+                        ScaleSource::Gravity => "gravity",
+                        ScaleSource::Buoyancy => "air buoyancy",
+                        ScaleSource::Extrapolation => "beyond the heaviest weight",
+                        ScaleSource::Stated => "stated accuracy",
+                    })
+                });
+            }
+        }
+        if let Some(u) = record.inputs.run.stand.force_ratio.and_then(|r| r.standard_uncertainty) {
+            effects.push(self.relative("force ratio", u / record.force_ratio));
+        }
+        (effects, known)
+    }
+
+    fn relative(&self, source: &str, r: f64) -> Effect {
+        Effect {
+            total_impulse: r * self.total_impulse,
+            burn_impulse: r * self.burn_impulse,
+            peak_thrust: r * self.curve.peak.thrust_n,
+            initial_thrust: r * self.initial,
+            ..Effect::of(source)
+        }
+    }
+
+    /// The channel's force at rest before the burn, N as the calibration reads it.
+    fn rest_of(&self, channel: &force::Channel<'_>) -> f64 {
+        let end = self.zero.burst.start;
+        let start = end.saturating_sub(200).max(self.zero.window.start.min(end));
+        let quiet = if end > start { &channel.force_n[start..end] } else { &channel.force_n[self.zero.burst.end - 1..] };
+        if quiet.is_empty() { 0.0 } else { quiet.iter().sum::<f64>() / quiet.len() as f64 }
+    }
+
+    /// Effect of a zero that is off by `course(t)`.
+    fn zero_effect(&self, source: &str, course: impl Fn(f64) -> f64) -> Effect {
+        let change: Vec<f64> = self.bt.iter().map(|t| -course(*t)).collect();
+        let (start, end) = (&self.burn.start, &self.burn.end);
+        let moved = |c: &Crossing| if c.slope > 0.0 { course(c.time_s) / c.slope } else { 0.0 };
+        Effect {
+            total_impulse: integral::trapezoid(self.bt, &change),
+            burn_impulse: integral::between(self.bt, &change, start.time_s, end.time_s),
+            burn_time: -moved(start) - moved(end),
+            action_time: -moved(&self.action.start) - moved(&self.action.end),
+            peak_thrust: -course(self.curve.peak.time_s),
+            initial_thrust: integral::between(self.bt, &change, start.time_s, start.time_s + self.initial_s)
+                / self.initial_s,
+            ..Effect::of(source)
+        }
+    }
+
+    fn zero(&self) -> Vec<Effect> {
+        let baseline = &self.zero.baseline;
+        let mass_per_newton = match (&self.zero.shift_mass_kg, self.record.inputs.run.motor.propellant_mass_kg) {
+            (Some(_), None) => 1.0 / self.record.gravity.value_m_s2,
+            _ => 0.0,
+        };
+        let mut effects = Vec::new();
+        if let Some(before) = &baseline.before {
+            let u = before.level_u;
+            effects.push(Effect {
+                propellant_mass: u * mass_per_newton,
+                ..self.zero_effect("zero before", |t| u * baseline.sensitivity(t).0)
+            });
+        }
+        if let Some(after) = &baseline.after {
+            let u = after.level_u;
+            effects.push(Effect {
+                propellant_mass: -u * mass_per_newton,
+                ..self.zero_effect("zero after", |t| u * baseline.sensitivity(t).1)
+            });
+        }
+        if self.zero.drift_u_n > 0.0 {
+            let u = self.zero.drift_u_n;
+            effects.push(self.zero_effect("course of the zero's drift", |_| u));
+        }
+        effects
+    }
+
+    fn noise(&self) -> Vec<Effect> {
+        let density = zero::noise_density(self.zero, self.record.interval_s());
+        let duration = self.bt[self.bt.len() - 1] - self.bt[0];
+        vec![
+            Effect {
+                total_impulse: (density * duration).sqrt(),
+                burn_impulse: (density * self.burn_time).sqrt(),
+                initial_thrust: (density / self.initial_s).sqrt(),
+                ..Effect::of("noise")
+            },
+            Effect { peak_thrust: self.curve.peak.noise_u_n, ..Effect::of("noise at the peak") },
+            Effect {
+                total_impulse: self.sampling_u(),
+                burn_impulse: self.sampling_u(),
+                ..Effect::of("sampling")
+            },
+        ]
+    }
+
+    /// What the straight lines between samples may miss: second differences beyond noise, each over its interval, and gaps.
+    fn sampling_u(&self) -> f64 {
+        let noise = 6.0 * self.curve.quiet_sd_n.powi(2);
+        let mut sum = 0.0;
+        // An averaging converter misses nothing between its stamps.
+        if !self.record.averaged_cells() {
+            for (t, f) in self.bt.windows(3).zip(self.bf.windows(3)) {
+                let d = f[0] - 2.0 * f[1] + f[2];
+                let excess = (d * d - 4.0 * noise).max(0.0);
+                // A jump at an unknown place in one interval: jump · dt / √12, and it shows in two second differences.
+                sum += excess * ((t[2] - t[0]) / 2.0).powi(2) / 24.0;
+            }
+        }
+        for gap in &self.record.inputs.log.gaps {
+            let (a, b) = (gap.start_s, gap.end_s);
+            if b > self.bt[0] && a < self.bt[self.bt.len() - 1] {
+                let ends = [curve::at(self.bt, self.bf, a), curve::at(self.bt, self.bf, b)];
+                // Between the two ends the thrust is not known: a jump anywhere in the gap, and 2 % of thrust besides.
+                let u = (ends[1] - ends[0]).abs() / 12f64.sqrt() + 0.02 * ends[0].max(ends[1]).max(0.0);
+                sum += (u * (b - a)).powi(2);
+            }
+        }
+        sum.sqrt()
+    }
+
+    fn ends(&self, delay_u: Option<f64>) -> Vec<Effect> {
+        let curve = self.curve;
+        let instant = |c: &Crossing, level: f64| {
+            if c.slope.is_infinite() {
+                return 0.0;
+            }
+            let error = curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
+            let threshold = level * curve.peak.noise_u_n;
+            let noise = if c.slope > 0.0 { error.hypot(threshold) / c.slope } else { 0.0 };
+            noise.hypot(c.sampling_half_width_s / 3f64.sqrt())
+        };
+        let (start_u, end_u) = (instant(&self.burn.start, BURN_LEVEL), instant(&self.burn.end, BURN_LEVEL));
+        let (up_u, down_u) = (instant(&self.action.start, ACTION_LEVEL), instant(&self.action.end, ACTION_LEVEL));
+        let level_n = BURN_LEVEL * curve.peak.thrust_n;
+        let source = "interval ends";
+        vec![
+            Effect {
+                burn_time: -start_u,
+                burn_impulse: -level_n * start_u,
+                action_time: -up_u,
+                rise_time: -up_u,
+                ignition_delay: delay_u.map_or(0.0, |u| u.hypot(start_u)),
+                ..Effect::of(source)
+            },
+            Effect { burn_time: end_u, burn_impulse: level_n * end_u, action_time: down_u, ..Effect::of(source) },
+            Effect { rise_time: self.rise_time.map_or(0.0, |_| self.risen_u()), ..Effect::of(source) },
+        ]
+    }
+
+    /// Uncertainty of the instant at which 90 % of peak is reached, s.
+    fn risen_u(&self) -> f64 {
+        let curve = self.curve;
+        crossings::first_up(&curve.time_s, &curve.thrust_n, RISEN_LEVEL * curve.peak.thrust_n).map_or(0.0, |c| {
+            let error = curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
+            (error.hypot(RISEN_LEVEL * curve.peak.noise_u_n) / c.slope.max(f64::MIN_POSITIVE))
+                .hypot(curve.conditioned.interval_s / 12f64.sqrt())
+        })
+    }
+
+    /// The clock scales times and impulse together.
+    fn clock(&self) -> Effect {
+        let stated = self.record.inputs.run.log.clock_tolerance;
+        let r = match stated {
+            Some(tolerance) => tolerance.value / 3f64.sqrt(),
+            None => CRYSTAL_CLOCK / 3f64.sqrt(),
+        };
+        Effect {
+            total_impulse: r * self.total_impulse,
+            burn_impulse: r * self.burn_impulse,
+            burn_time: r * self.burn_time,
+            action_time: r * self.action_time,
+            rise_time: r * self.rise_time.unwrap_or(0.0),
+            ignition_delay: r * self.delay.unwrap_or(0.0),
+            ..Effect::of("clock")
+        }
+    }
+}
