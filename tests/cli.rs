@@ -155,3 +155,109 @@ fn a_reader_that_goes_away_is_no_trouble_and_a_full_device_is_said() {
         .unwrap();
     assert_eq!(status.code(), Some(1));
 }
+
+fn samples() -> std::path::PathBuf {
+    Path::new(env!("CARGO_MANIFEST_DIR")).join("sample-runs")
+}
+
+#[test]
+fn a_sample_run_is_reduced_to_all_its_files() {
+    let dir = tempfile::tempdir().unwrap();
+    let run = samples().join("bw1-1");
+    let output = burntally(dir.path()).arg("reduce").arg(&run).assert().code(0).get_output().clone();
+    let said = text(&output.stdout);
+    assert!(said.contains("BW1-1") && said.contains("total impulse") && said.contains("±"), "{said}");
+    let folder = dir.path().join("reduced/BW1-1");
+    let expected = [
+        "report.html",
+        "result.json",
+        "thrust-table.csv",
+        "thrust-table.csv-metadata.json",
+        "thrust.png",
+        "thrust.svg",
+    ];
+    assert_eq!(names(&folder), expected);
+
+    // The table carries the impulse and the peak of result.json, within what the contract allows it.
+    let result: serde_json::Value =
+        serde_json::from_str(&fs::read_to_string(folder.join("result.json")).unwrap()).unwrap();
+    let figure = |key: &str| result["quantities"][key]["value"].as_f64().unwrap();
+    let table = fs::read_to_string(folder.join("thrust-table.csv")).unwrap();
+    let rows: Vec<[f64; 2]> = table
+        .lines()
+        .skip(1)
+        .map(|line| {
+            let mut fields = line.split(',').map(|field| field.parse().unwrap());
+            [fields.next().unwrap(), fields.next().unwrap()]
+        })
+        .collect();
+    let impulse: f64 = rows.windows(2).map(|w| (w[1][0] - w[0][0]) * (w[0][1] + w[1][1]) / 2.0).sum();
+    let peak = rows.iter().map(|row| row[1]).fold(0.0, f64::max);
+    assert!(rows.len() <= 400 && rows[0] == [0.0, 0.0] && rows[rows.len() - 1][1] == 0.0);
+    assert!((impulse / figure("total_impulse") - 1.0).abs() < 2e-4, "{impulse}");
+    assert!((peak / figure("peak_thrust") - 1.0).abs() < 5e-3, "{peak}");
+
+    // Once more, numbers only: the pictures of the first time would contradict, notes of a person would not.
+    fs::write(folder.join("notes.txt"), "mine").unwrap();
+    let arguments = ["--json", "--no-pictures"];
+    let output = burntally(dir.path()).arg("reduce").arg(&run).args(arguments).assert().code(0).get_output().clone();
+    let said: serde_json::Value = serde_json::from_slice(&output.stdout).unwrap();
+    assert_eq!(said, result);
+    assert_eq!(names(&folder), ["notes.txt", "result.json", "thrust-table.csv", "thrust-table.csv-metadata.json"]);
+}
+
+#[test]
+fn several_runs_stand_alone() {
+    let dir = tempfile::tempdir().unwrap();
+    let output = burntally(dir.path())
+        .args(["reduce", "gone.csv", "--json", "--no-pictures", "--out", "there"])
+        .args(["bw1-1", "bw2-2"].map(|run| samples().join(run)))
+        .assert()
+        .code(1)
+        .get_output()
+        .clone();
+    let ids: Vec<String> = text(&output.stdout)
+        .lines()
+        .map(|line| serde_json::from_str::<serde_json::Value>(line).unwrap()["run"]["id"].as_str().unwrap().to_owned())
+        .collect();
+    assert_eq!(ids, ["BW1-1", "BW2-2"], "in the order they were named");
+    assert!(text(&output.stderr).contains("gone.csv"));
+    assert_eq!(names(&dir.path().join("there")), ids);
+    // The clipped one alone: done, but a check failed.
+    burntally(dir.path()).arg("reduce").arg(samples().join("bw2-2")).arg("-q").assert().code(3).stdout("");
+}
+
+#[test]
+fn a_run_started_from_its_log_is_reduced_once_it_is_filled_in() {
+    let dir = tempfile::tempdir().unwrap();
+    let log = samples().join("bw1-1/bw1-1.csv");
+    burntally(dir.path()).args(["new", "X-1", "--log"]).arg(&log).assert().code(0);
+    burntally(dir.path()).args(["reduce", "X-1"]).assert().code(1);
+    let file = dir.path().join("X-1/run.toml");
+    let filled: String = fs::read_to_string(&file)
+        .unwrap()
+        .lines()
+        .map(|line| if line.starts_with("unit = ") { "unit = \"N\"\n".to_owned() } else { format!("{line}\n") })
+        .collect();
+    fs::write(&file, filled).unwrap();
+    let output = burntally(dir.path()).args(["reduce", "X-1"]).output().unwrap();
+    assert!(matches!(output.status.code(), Some(0 | 3)), "{}", text(&output.stderr));
+    assert!(dir.path().join("reduced/X-1/result.json").is_file());
+}
+
+#[test]
+fn a_calibration_is_fitted_and_a_log_inspected() {
+    let dir = tempfile::tempdir().unwrap();
+    let cell = samples().join("../calibration/trough-2kn.toml");
+    let output = burntally(dir.path()).arg("calibrate").arg(&cell).assert().code(0).get_output().clone();
+    assert!(text(&output.stdout).contains("calibrated/trough-2kn"));
+    let folder = dir.path().join("calibrated/trough-2kn");
+    assert_eq!(names(&folder), ["calibration.json", "residuals.png", "residuals.svg"]);
+    let log = samples().join("bw1-1/bw1-1.csv");
+    let output = burntally(dir.path()).arg("inspect").arg(&log).assert().code(0).get_output().clone();
+    assert!(text(&output.stdout).contains("samples a second"));
+    let output = burntally(dir.path()).arg("inspect").arg(&log).arg("--json").assert().code(0).get_output().clone();
+    let value: serde_json::Value = serde_json::from_slice(&output.stdout).unwrap();
+    assert!(!value["bursts"].as_array().unwrap().is_empty());
+    assert_eq!(names(dir.path()), ["calibrated"]);
+}

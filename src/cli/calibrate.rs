@@ -54,13 +54,16 @@ fn describe(fitted: &Fitted, units: Units) -> String {
     let report = &fitted.report;
     let mut lines = vec![summary::plain(&fitted.name), String::new()];
     let mut line = |name: &str, text: Option<String>| {
-        lines.push(format!("  {name:<24} {}", text.unwrap_or_else(|| "not known".to_owned())));
+        let text = text.unwrap_or_else(|| "not known".to_owned());
+        lines.extend(summary::wrapped(&text, &format!("  {name:<24} "), &" ".repeat(27)));
     };
     let number = |key: &str| report.get(key).and_then(Value::as_f64);
     let reading_unit = report.get("reading_unit").and_then(Value::as_str).unwrap_or("").to_owned();
     let force = units.force();
     line("degree", number("degree").map(|degree| degree.to_string()));
-    line("points", report.get("points").and_then(Value::as_array).map(|points| points.len().to_string()));
+    line("why", report.get("reason").and_then(Value::as_str).map(summary::plain));
+    let points = report.get("points").and_then(Value::as_array).map_or(0, Vec::len);
+    line("points", Some(if points == 0 { "none: no fit".to_owned() } else { points.to_string() }));
     if let Some(slope) = report.get("coefficients").and_then(|list| list.get(1)).and_then(Value::as_f64) {
         let slope = significant(slope * force.size_si, 7);
         line("sensitivity at zero", Some(format!("{slope} {reading_unit}/{}", force.symbol)));
@@ -81,6 +84,12 @@ fn describe(fitted: &Fitted, units: Units) -> String {
         ("repeatability", "repeatability_percent"),
     ] {
         line(name, number(key).map(|percent| format!("{} % of full scale", significant(percent, 2))));
+    }
+    for (key, first) in [("cautions", "  caution "), ("findings", "  ")] {
+        let texts = report.get(key).and_then(Value::as_array).into_iter().flatten().filter_map(Value::as_str);
+        for text in texts.filter(|text| report.get("reason").and_then(Value::as_str) != Some(*text)) {
+            lines.extend(summary::wrapped(&summary::plain(text), first, "    "));
+        }
     }
     lines.push(String::new());
     lines.push(String::new());

@@ -98,8 +98,8 @@ fn describe(name: &str, log: &Log, found: &InspectFindings) -> String {
     if let Some(hz) = found.resonance_hz {
         section(&mut lines, "resonance", vec![format!("the stand rings at about {} Hz", significant(hz, 3))]);
     }
-    let bursts = found.bursts.iter().map(|(start_s, end_s, peak)| {
-        format!("{} to {} s, peak {}", fixed(*start_s, 2), fixed(*end_s, 2), significant(*peak, 4))
+    let bursts = found.bursts.iter().map(|(column, start_s, end_s, peak)| {
+        format!("{}: {} to {} s, peak {}", plain(column), fixed(*start_s, 2), fixed(*end_s, 2), significant(*peak, 4))
     });
     section(&mut lines, "bursts", bursts.collect());
     lines.push(String::new());
@@ -135,7 +135,7 @@ fn as_json(name: &str, log: &Log, found: &InspectFindings) -> serde_json::Value 
     let bursts: Vec<serde_json::Value> = found
         .bursts
         .iter()
-        .map(|(start_s, end_s, peak)| json!({ "start_s": start_s, "end_s": end_s, "peak": peak }))
+        .map(|(column, start_s, end_s, peak)| json!({ "column": column, "start_s": start_s, "end_s": end_s, "peak": peak }))
         .collect();
     json!({
         "file": name, "bytes": log.bytes, "sha256": log.sha256, "records": log.records, "duration_s": duration_s(log),
@@ -155,7 +155,7 @@ mod tests {
         let found = InspectFindings {
             noise: vec![("load".to_owned(), 12.3)],
             resonance_hz: Some(38.2),
-            bursts: vec![(128.3, 135.9, 41_234.0)],
+            bursts: vec![("load".to_owned(), 128.3, 135.9, 41_234.0)],
         };
         let text = describe("a.csv", &log(), &found);
         for part in [

@@ -30,12 +30,7 @@ pub fn run_toml(id: &str, from: Option<&FromLog>) -> String {
     let mut text =
         String::from("# One firing. A quantity is text with its unit; limits go after ±: \"412.3 ± 0.5 g\".\n");
     text.push_str("# Lines that start with # are optional: take the # away and write your own value.\n");
-    if let Some(from) = from {
-        text.push_str(
-            &format!("# {PLACEHOLDER} marks what the log could not tell.\n").replace(PLACEHOLDER, &quoted(PLACEHOLDER)),
-        );
-        let _ = from;
-    }
+    text.push_str(&format!("# {} marks what only you can tell.\n", quoted(PLACEHOLDER)));
     text.push_str(&format!("\n[run]\nid = {}\n", quoted(id)));
     text.push_str("# pour = \"FM\"              # the batch of propellant the motor came from\n");
     text.push_str("# date = \"2026-05-14\"\n");
@@ -87,7 +82,7 @@ fn time_column(log: &Log) -> Option<&str> {
 }
 
 /// The column that carries the force: the only one, or the one named most like it.
-fn force_column(log: &Log) -> Option<&Column> {
+pub(super) fn force_column(log: &Log) -> Option<&Column> {
     let candidates: Vec<&Column> = log.columns.iter().filter(|column| !is_pressure(column)).collect();
     match candidates.as_slice() {
         [only] => Some(only),
@@ -248,7 +243,9 @@ pub(crate) mod tests {
         let text = run_toml("FM-07", None);
         let opened: String = text
             .lines()
-            .filter(|line| !line.starts_with("# One firing") && !line.starts_with("# Lines that"))
+            .filter(|line| {
+                !line.starts_with("# One firing") && !line.starts_with("# Lines that") && !line.starts_with("# \"")
+            })
             .map(|line| line.strip_prefix("# ").unwrap_or(line).to_owned() + "\n")
             .collect();
         let table = table(&opened);

@@ -2,7 +2,7 @@
 
 use super::advice;
 use super::figures::named;
-use super::units::{Units, fixed, significant, words};
+use super::units::{Units, fixed, percent, significant, words};
 use crate::firing::{Firing, Status};
 use crate::problem::Problem;
 use minijinja::value::Serde;
@@ -58,8 +58,7 @@ fn content(firing: &Firing, svg: Option<&str>, units: Units) -> Value {
         })
         .collect();
     let probability = firing.motor_class.as_ref().and_then(|class| class.probability.as_ref()).map(|probability| {
-        let parts: Vec<String> =
-            probability.iter().map(|(letter, p)| format!("{letter} {} %", significant(p * 100.0, 2))).collect();
+        let parts: Vec<String> = probability.iter().map(|(letter, p)| format!("{letter} {}", percent(*p))).collect();
         parts.join(", ")
     });
     let bursts: Vec<Value> = firing

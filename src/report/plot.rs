@@ -71,7 +71,7 @@ pub fn thrust_svg(firing: &Firing, curves: &Curves, units: Units) -> Result<Stri
         canvas.stroked(points, 5, palette::MOSS, Stroke::DashDot)?;
         pressure_axis(&canvas, &frame, *highest_pa, units)?;
     }
-    canvas.line(envelope(&curves.time_s, &curves.conditioned_n, &frame), 6, palette::STRONG)?;
+    canvas.line(envelope(&curves.time_s, &curves.conditioned_n, &frame), 5, palette::STRONG)?;
     peak(&canvas, &frame, firing, curves, units)?;
     legend(&canvas, pressure.is_some())?;
     canvas.finish()?;
@@ -239,7 +239,7 @@ fn legend(canvas: &Canvas, with_pressure: bool) -> Result<(), Problem> {
     let columns = [LEFT, LEFT + 335, LEFT + 670];
     let sample = |x: i32, y: i32| vec![(x, y), (x + 64, y)];
     let name = |text: &str, x: i32, y: i32| canvas.text(text, (x + 78, y), Anchor::Left, INK);
-    canvas.line(sample(columns[0], rows[0]), 6, palette::STRONG)?;
+    canvas.line(sample(columns[0], rows[0]), 5, palette::STRONG)?;
     name("thrust", columns[0], rows[0])?;
     let jagged = (0..9).map(|i| (columns[0] + 8 * i, rows[1] + if i % 2 == 0 { -7 } else { 7 })).collect();
     canvas.line(jagged, 2, palette::FAINT)?;

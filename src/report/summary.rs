@@ -2,7 +2,7 @@
 
 use super::advice;
 use super::figures::named;
-use super::units::{Units, fixed, significant, words};
+use super::units::{Units, fixed, percent, words};
 use crate::firing::{Firing, Status};
 use std::path::Path;
 
@@ -17,6 +17,8 @@ pub struct View {
 const WIDTH: usize = 80;
 /// Checks beyond this many that are only cautions are counted, so that the summary fits on a screen.
 const MOST_CAUTIONS: usize = 4;
+/// With more cautions than this the advice on them is left to the page, for the same reason.
+const MOST_ADVISED: usize = 2;
 
 #[derive(Clone, Copy)]
 enum Tone {
@@ -107,7 +109,7 @@ fn heading(firing: &Firing, view: View, lines: &mut Vec<String>) {
             let mut text = format!("class {}, {} % up its band", class.letter, fixed(class.position * 100.0, 0));
             if let Some(probability) = class.probability.as_ref().filter(|probability| probability.len() > 1) {
                 let parts: Vec<String> =
-                    probability.iter().map(|(letter, p)| format!("{letter} {} %", significant(p * 100.0, 2))).collect();
+                    probability.iter().map(|(letter, p)| format!("{letter} {}", percent(*p))).collect();
                 text.push_str(&format!("; probability {}", parts.join(", ")));
             }
             lines.push(format!("  {}  {text}", view.paint(&format!("{:<18}", class.designation), Tone::Strong)));
@@ -171,7 +173,8 @@ fn checks(firing: &Firing, view: View, lines: &mut Vec<String>) {
             let text = format!("{}: {}", check.id, plain(&check.message));
             let first = format!("  {word:<8}");
             let mut block = wrapped(&text, &first, "          ");
-            if let Some(advice) = advice::for_check(&check.id) {
+            let advised = status == Status::Fail || cautions <= MOST_ADVISED;
+            if let Some(advice) = advice::for_check(&check.id).filter(|_| advised) {
                 block.extend(wrapped(advice, "          -> ", "             "));
             }
             if let Some(line) = block.first_mut() {
@@ -242,7 +245,7 @@ mod tests {
             firing.checks.push(Check { id: id.to_owned(), status: Status::Caution, message });
         }
         let text = text(&firing);
-        assert!(text.lines().count() <= 38, "{text}");
+        assert!(text.lines().count() <= 32, "{text}");
         assert!(text.lines().all(|line| line.chars().count() <= 80), "{text}");
         assert!(super::summary(&sample::firing(), View::default(), None).lines().count() <= 28);
     }

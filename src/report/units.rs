@@ -154,6 +154,17 @@ pub fn fixed(value: f64, decimals: i32) -> String {
     }
 }
 
+/// A share from 0 to 1 in whole percent; a small one is not rounded to nothing, nor one near 1 to certainty.
+pub fn percent(share: f64) -> String {
+    if share > 0.0 && share < 0.01 {
+        "under 1 %".to_owned()
+    } else if share < 1.0 && share > 0.99 {
+        "over 99 %".to_owned()
+    } else {
+        format!("{} %", fixed(share * 100.0, 0))
+    }
+}
+
 /// A plain number to so many significant digits.
 pub fn significant(value: f64, digits: i32) -> String {
     if value == 0.0 {
@@ -208,6 +219,10 @@ mod tests {
         assert_eq!(significant(0.0, 3), "0");
         assert_eq!(significant(1234.5, 2), "1200");
         assert_eq!(fixed(-0.001, 1), "0.0");
+        assert_eq!(
+            [0.0, 0.002, 0.03, 0.97, 0.998, 1.0].map(percent).join(", "),
+            "0 %, under 1 %, 3 %, 97 %, over 99 %, 100 %"
+        );
         assert_eq!(significant(0.099_96, 2), "0.10");
     }
 }
