@@ -1,0 +1,130 @@
+//! What can be written on the command line.
+
+use crate::report::units::Units;
+use clap::{Args, Parser, Subcommand, ValueEnum};
+use std::path::PathBuf;
+
+/// Reduces static-fire logs of solid rocket motors to a trusted thrust curve and motor figures with uncertainty.
+///
+/// A measured motor is not a certified one. Local law, the range's safety code and licensed practice rule.
+#[derive(Debug, Parser)]
+#[command(name = "burntally", version, arg_required_else_help = true)]
+pub struct Arguments {
+    #[command(subcommand)]
+    pub command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+pub enum Command {
+    /// Reduce one or several firings to thrust curve and figures
+    #[command(
+        after_help = "Exit status: 0 done, 1 refused (that run wrote nothing), 2 wrong usage, 3 done but a check failed."
+    )]
+    Reduce(ReduceArguments),
+    /// Fit a load cell's calibration and draw its residuals
+    Calibrate(CalibrateArguments),
+    /// Say what is in a log; writes nothing
+    Inspect(InspectArguments),
+    /// Start a run folder with a commented run.toml
+    New(NewArguments),
+}
+
+/// Flags of every command.
+#[derive(Debug, Clone, Copy, Args)]
+pub struct Common {
+    /// The result as JSON on standard output, nothing else there
+    #[arg(long)]
+    pub json: bool,
+    /// Say nothing but what is refused
+    #[arg(long, short)]
+    pub quiet: bool,
+    /// Units a person reads; result.json and the tables stay SI
+    #[arg(long, value_enum, default_value_t = UnitsArgument::Si)]
+    pub units: UnitsArgument,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, ValueEnum)]
+pub enum UnitsArgument {
+    /// newtons, seconds, kilograms
+    Si,
+    /// pounds-force, seconds, pounds
+    Us,
+}
+
+impl From<UnitsArgument> for Units {
+    fn from(argument: UnitsArgument) -> Self {
+        match argument {
+            UnitsArgument::Si => Units::Si,
+            UnitsArgument::Us => Units::Us,
+        }
+    }
+}
+
+#[derive(Debug, Args)]
+pub struct ReduceArguments {
+    /// A run.toml, a folder holding one (or many, searched), or a bare log
+    #[arg(required = true, value_name = "RUN")]
+    pub runs: Vec<PathBuf>,
+    /// Folder for the results; each run gets a folder of its own in it
+    #[arg(long, value_name = "DIR", default_value = "reduced")]
+    pub out: PathBuf,
+    /// Calibration of a bare log
+    #[arg(long, value_name = "FILE")]
+    pub calibration: Option<PathBuf>,
+    /// Unit of a bare log's readings, such as count, mV/V, N or lbf
+    #[arg(long, value_name = "UNIT")]
+    pub unit: Option<String>,
+    /// Numbers and tables only: no pictures and no page
+    #[arg(long)]
+    pub no_pictures: bool,
+    /// Most rows of the thrust table
+    #[arg(long, value_name = "ROWS", default_value_t = 400, value_parser = clap::value_parser!(u32).range(5..=1_000_000))]
+    pub table_rows: u32,
+    #[command(flatten)]
+    pub common: Common,
+}
+
+#[derive(Debug, Args)]
+pub struct CalibrateArguments {
+    /// The calibration file
+    #[arg(value_name = "CAL.toml")]
+    pub file: PathBuf,
+    /// Folder for the results; `calibrated/` and the file's name without its ending, when absent
+    #[arg(long, value_name = "DIR")]
+    pub out: Option<PathBuf>,
+    /// Numbers only: no picture
+    #[arg(long)]
+    pub no_pictures: bool,
+    #[command(flatten)]
+    pub common: Common,
+}
+
+#[derive(Debug, Args)]
+pub struct InspectArguments {
+    /// The log
+    pub log: PathBuf,
+    #[command(flatten)]
+    pub common: Common,
+}
+
+#[derive(Debug, Args)]
+pub struct NewArguments {
+    /// Folder of the run; made if it is not there
+    pub dir: PathBuf,
+    /// Log to fill the run.toml from
+    #[arg(long)]
+    pub log: Option<PathBuf>,
+    #[command(flatten)]
+    pub common: Common,
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use clap::CommandFactory;
+
+    #[test]
+    fn the_definitions_are_sound() {
+        Arguments::command().debug_assert();
+    }
+}
