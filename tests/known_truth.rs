@@ -204,14 +204,20 @@ fn all_hold(failures: &[String]) {
     assert!(failures.is_empty(), "{} failures:\n{}", failures.len(), failures.join("\n"));
 }
 
+/// Impulse and burn time are held together for all rates from 80 Hz up, point samples and averages alike; the peak by rate.
+/// At 80 Hz alone the noise of these firings leaves the impulse uncertain by 0.035 % (standard uncertainty), so a median of
+/// 0.02 % says something of all rates together only.
 #[test]
 fn plain_firings_come_out_true() {
-    let cases = run_kind(Kind::Plain, 60);
-    let impulse = both(0.0015, 0.0002);
-    let burn_time = Some(both(0.007, 0.001));
+    let mut cases = run_kind(Kind::Plain, 60);
+    cases.extend(run_kind(Kind::Averaging80Hz, 20));
+    let all: Vec<&Case> = cases.iter().collect();
+    let no_peak = Tolerance { each: 0.02, median: None };
+    let mut failures = judge("80 Hz and more", &all, &rows(both(0.0015, 0.0002), no_peak, Some(both(0.007, 0.001))));
     let (fast, slow): (Vec<&Case>, Vec<&Case>) = cases.iter().partition(|c| c.scenario.logger.rate_hz >= 300.0);
-    let mut failures = judge("300 Hz and more", &fast, &rows(impulse, each(0.005), burn_time));
-    failures.extend(judge("80 to 200 Hz", &slow, &rows(impulse, both(0.02, 0.002), burn_time)));
+    let impulse = each(0.0015);
+    failures.extend(judge("300 Hz and more", &fast, &rows(impulse, each(0.005), None)));
+    failures.extend(judge("80 to 200 Hz", &slow, &rows(impulse, both(0.02, 0.002), None)));
     failures.extend(wrong_classes(&cases));
     all_hold(&failures);
 }
@@ -221,12 +227,6 @@ fn kind_holds(kind: Kind, count: u64, rows: &[Row]) {
     let mut failures = judge(&format!("{kind:?}"), &cases.iter().collect::<Vec<_>>(), rows);
     failures.extend(wrong_classes(&cases));
     all_hold(&failures);
-}
-
-#[test]
-fn an_80_hz_converter_that_averages_comes_out_true() {
-    let rows = rows(both(0.0015, 0.0002), both(0.02, 0.002), Some(both(0.007, 0.001)));
-    kind_holds(Kind::Averaging80Hz, 20, &rows);
 }
 
 #[test]

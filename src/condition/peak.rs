@@ -29,6 +29,9 @@ const NEXT_POWER_LIMIT: f64 = 1.6;
 /// Fits whose standard error is within this factor of the smallest count alike.
 const NEARLY_AS_WELL: f64 = 1.5;
 
+/// Share of the way from the highest sample to the crossing of the two lines beside it that a peak is taken to reach.
+const TOWARDS_CROSSING: f64 = 0.75;
+
 /// Running sums from the top outwards: Σ y, Σ x y, Σ x² y, Σ x³ y, Σ y², x counted from the top.
 struct Sums(Vec<[f64; 5]>);
 
@@ -138,7 +141,8 @@ pub fn fit(data: &[f64], top: usize, sigma: f64) -> Option<PeakFit> {
 /// What a peak between two samples may add to the highest sample `top`, and the standard uncertainty of that.
 ///
 /// Where a steep line leads up to the gap beside the highest sample and a flatter one down from it, the two carried on cross
-/// above both samples. A sharp peak reaches that crossing and a rounded one stays below: half of the way is taken.
+/// above both samples. A sharp peak reaches that crossing and a rounded one stays below: most of the way is taken, and all
+/// of it counts as uncertain.
 pub fn between_samples(data: &[f64], top: usize, sigma: f64) -> Option<(f64, f64)> {
     let at = |k: isize| data.get(usize::try_from(top as isize + k).ok()?).copied();
     // The gap before (from -1 to 0) and the gap after (from 0 to 1) the highest sample.
@@ -153,7 +157,7 @@ pub fn between_samples(data: &[f64], top: usize, sigma: f64) -> Option<(f64, f64
         (0.0..=1.0).contains(&x).then(|| a1 + up * x - at(0).unwrap_or(f64::INFINITY))
     };
     let excess = crossing(-1).into_iter().chain(crossing(0)).fold(0.0, f64::max);
-    (excess > 0.0).then_some((excess / 2.0, excess / 12f64.sqrt()))
+    (excess > 0.0).then_some((TOWARDS_CROSSING * excess, excess / 12f64.sqrt()))
 }
 
 fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, sigma: f64) -> Option<PeakFit> {
@@ -271,7 +275,7 @@ mod tests {
         // A ramp of 50 a sample, reached at 70, meets a fall of 5 a sample from 100 at 70 + 50 x = 105 - 5 x, x = 35/55.
         let (excess, u) = between_samples(&[0.0, 20.0, 70.0, 100.0, 95.0, 90.0], 3, 0.1).expect("excess");
         let crossing = 70.0 + 50.0 * 35.0 / 55.0 - 100.0;
-        assert!((excess - crossing / 2.0).abs() < 1e-9 && (u - crossing / 12f64.sqrt()).abs() < 1e-9);
+        assert!((excess - 0.75 * crossing).abs() < 1e-9 && (u - crossing / 12f64.sqrt()).abs() < 1e-9);
         // A hump is no sharp peak, and noise is no slope.
         assert_eq!(between_samples(&[80.0, 90.0, 97.0, 100.0, 97.0, 90.0, 80.0], 3, 0.1), None);
         assert_eq!(between_samples(&[0.0, 20.0, 70.0, 100.0, 99.9, 99.8], 3, 0.1), None);

@@ -7,6 +7,8 @@ use crate::run::{CheckLoadSpec, ReductionSpec};
 
 /// Shortest stretch that an impact of the stand may ring and still be called one, s.
 const KNOCK_S: f64 = 0.6;
+/// A burst after the burn that stands this far above it is an impact, however long it rings: no ejection pushes so hard.
+const KNOCK_HEIGHT: f64 = 1.2;
 /// A burst of less than this share of the burn's peak is not told apart from the record's own unrest.
 pub const LEAST_PEAK: f64 = 0.01;
 
@@ -64,7 +66,7 @@ pub fn kind(event: &Event, burn: &Event, time_s: &[f64], loads: &[CheckLoadSpec]
     // An impact swings through zero and leaves little impulse for its height, or stands far above the burn for a moment.
     let swings = impulse.abs() < 0.25 * peak.abs() * duration;
     if event.start > burn.start {
-        if duration < KNOCK_S && (peak.abs() > 1.2 * burn.peak.abs() || swings) {
+        if peak.abs() > KNOCK_HEIGHT * burn.peak.abs() || (duration < KNOCK_S && swings) {
             BurstKind::Knock
         } else if duration < 1.0 && peak.abs() > 0.02 * burn.peak.abs() {
             BurstKind::Ejection

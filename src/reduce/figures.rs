@@ -26,6 +26,13 @@ pub const CRYSTAL_CLOCK: f64 = 1e-4;
 /// Thrust counts as measurable down to this share of peak where the noise allows.
 const MEASURABLE: f64 = 0.002;
 
+/// Error of the smoothed curve against the standard error that noise alone leaves in it; by simulated firings.
+const SMOOTHING_BIAS: f64 = 2.0;
+/// Standard uncertainty of the foot of a fast rise or fall in sample intervals, and the share of peak per interval from which
+/// on it counts in full; by simulated firings.
+const EDGE_SHARE: f64 = 0.15;
+const STEEP_SHARE: f64 = 0.2;
+
 /// All that is read from the curve.
 pub struct Figures {
     pub quantities: Quantities,
@@ -566,10 +573,15 @@ impl Work<'_> {
             if c.slope.is_infinite() {
                 return 0.0;
             }
-            let error = curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
+            // The smoothing allows a bias of about the width of its own interval before it takes a shorter window.
+            let error =
+                SMOOTHING_BIAS * curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
             let threshold = level * curve.peak.noise_u_n;
             let noise = if c.slope > 0.0 { error.hypot(threshold) / c.slope } else { 0.0 };
-            noise.hypot(c.sampling_half_width_s / 3f64.sqrt())
+            // The shape of a rise that passes within a few samples is known to a part of one interval only.
+            let dt = curve.conditioned.interval_s;
+            let steep = (c.slope * dt / (STEEP_SHARE * curve.peak.thrust_n)).min(1.0);
+            noise.hypot(c.sampling_half_width_s / 3f64.sqrt()).hypot(EDGE_SHARE * dt * steep)
         };
         let (start_u, end_u) = (instant(&self.burn.start, BURN_LEVEL), instant(&self.burn.end, BURN_LEVEL));
         let (up_u, down_u) = (instant(&self.action.start, ACTION_LEVEL), instant(&self.action.end, ACTION_LEVEL));
