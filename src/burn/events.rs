@@ -200,7 +200,7 @@ impl Finder<'_> {
                     if window.len() == q
                         && window.start > start
                         && (level - base).abs() <= near
-                        && self.is_level(window.clone(), 0.0015 * largest)
+                        && self.is_level(window.clone(), 0.0006 * largest)
                     {
                         events.push(self.event(start, window.start, cut, false, base, level));
                         open = None;

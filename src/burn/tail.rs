@@ -70,30 +70,49 @@ fn exponential(time_s: &[f64], thrust_n: &[f64]) -> Option<(f64, f64, Matrix2<f6
     Some((a, rate, covariance))
 }
 
-/// Extrapolates the tail of a burst from its last samples: those after the thrust has last been at `from_fraction` times
-/// what is left at the end, at most the later `longest_s` seconds.
-pub fn extrapolate(time_s: &[f64], thrust_n: &[f64], smoothed_n: &[f64], peak_n: f64) -> Option<Tail> {
+/// Shortest stretch fitted, samples, and by how much the next one is longer.
+const SHORTEST: usize = 8;
+const LONGER: f64 = 1.4;
+/// A stretch is explained when its residual variance exceeds the noise's by no more than this factor, give or take scatter.
+const EXPLAINED: f64 = 1.2;
+/// The course of a tail is not known to be exponential: at least this share of its impulse is uncertain.
+const COURSE_SHARE: f64 = 0.1;
+
+/// Extrapolates the tail of a burst from its last samples: from the longest stretch up to the end of the record that an
+/// exponential explains within the noise (`noise_n`, standard deviation of a sample), none of it above 70 % of peak.
+pub fn extrapolate(time_s: &[f64], thrust_n: &[f64], smoothed_n: &[f64], peak_n: f64, noise_n: f64) -> Option<Tail> {
     let n = time_s.len();
     let end = *time_s.last()?;
-    let last = *smoothed_n.last()?;
-    if last <= 0.0 {
+    if *smoothed_n.last()? <= 0.0 {
         return None;
     }
-    // From where the thrust was three times what is left at the end: an older course of the burn says little of the tail.
-    let ceiling = (3.0 * last).min(0.7 * peak_n);
-    let from = smoothed_n.iter().rposition(|v| *v > ceiling).map_or(0, |i| i + 1);
-    if n - from < 5 {
-        return None;
+    let from = smoothed_n.iter().rposition(|v| *v > 0.7 * peak_n).map_or(0, |i| i + 1);
+    let back: Vec<f64> = time_s.iter().map(|t| t - end).collect();
+    let mut chosen = None;
+    let mut length = SHORTEST;
+    let mut failures = 0;
+    while length <= n - from && failures < 4 {
+        let (t, f) = (&back[n - length..], &thrust_n[n - length..]);
+        if let Some((a, rate, covariance)) = exponential(t, f) {
+            let dof = length as f64 - 2.0;
+            let rss: f64 = t.iter().zip(f).map(|(t, y)| (y - a * (-rate * t).exp()).powi(2)).sum();
+            let limit = noise_n * noise_n * (EXPLAINED * dof + 3.0 * (2.0 * dof).sqrt());
+            if chosen.is_none() || rss <= limit.max(1e-12 * peak_n * peak_n * dof) {
+                chosen = Some((a, rate, covariance, length));
+                failures = 0;
+            } else {
+                failures += 1;
+            }
+        }
+        length = (length as f64 * LONGER).ceil() as usize;
     }
-    let back: Vec<f64> = time_s[from..].iter().map(|t| t - end).collect();
-    let (a, rate, covariance) = exponential(&back, &thrust_n[from..])?;
+    let (a, rate, covariance, length) = chosen?;
     let impulse = a / rate;
     let sensitivity = Vector2::new(1.0 / rate, -a / (rate * rate));
     let fit_u = (sensitivity.transpose() * covariance * sensitivity)[0].max(0.0).sqrt();
-    let half = back.len() / 2;
-    let other = exponential(&back[half..], &thrust_n[from + half..]).map_or(0.5 * impulse, |(a, r, _)| a / r);
-    // The course of a tail is not known to be exponential: half the difference between the two fits, and a tenth.
-    let model_u = (0.5 * (other - impulse)).abs().min(impulse).max(0.1 * impulse);
+    let half = n - (length / 2).max(SHORTEST.min(length));
+    let other = exponential(&back[half..], &thrust_n[half..]).map_or(impulse, |(a, r, _)| a / r);
+    let model_u = (0.5 * (other - impulse)).abs().min(impulse).max(COURSE_SHARE * impulse);
     Some(Tail { thrust_n: a, time_constant_s: 1.0 / rate, impulse, impulse_u: fit_u.hypot(model_u) })
 }
 
@@ -105,7 +124,7 @@ mod tests {
     fn an_exponential_tail_is_continued() {
         let t: Vec<f64> = (0..400).map(|i| f64::from(i) * 0.005).collect();
         let f: Vec<f64> = t.iter().map(|t| 100.0 * (-t / 0.8).exp()).collect();
-        let tail = extrapolate(&t, &f, &f, 100.0).expect("tail");
+        let tail = extrapolate(&t, &f, &f, 100.0, 0.01).expect("tail");
         let left = 100.0 * (-1.995f64 / 0.8).exp();
         assert!((tail.impulse - left * 0.8).abs() < 1e-6 && (tail.time_constant_s - 0.8).abs() < 1e-6, "{tail:?}");
         assert!((tail.thrust_at(0.8) - left / 1f64.exp()).abs() < 1e-6);
@@ -113,8 +132,16 @@ mod tests {
     }
 
     #[test]
+    fn a_plateau_before_the_tail_is_left_out_of_it() {
+        let t: Vec<f64> = (0..4000).map(|i| f64::from(i) * 0.001).collect();
+        let f: Vec<f64> = t.iter().map(|t| if *t < 3.5 { 20.0 } else { 20.0 * (-(t - 3.5) / 0.4).exp() }).collect();
+        let tail = extrapolate(&t, &f, &f, 100.0, 0.05).expect("tail");
+        assert!((tail.time_constant_s / 0.4 - 1.0).abs() < 0.1, "{tail:?}");
+    }
+
+    #[test]
     fn a_plateau_cannot_be_continued() {
         let t: Vec<f64> = (0..400).map(|i| f64::from(i) * 0.005).collect();
-        assert_eq!(extrapolate(&t, &vec![50.0; 400], &vec![50.0; 400], 50.0), None);
+        assert_eq!(extrapolate(&t, &[30.0; 400], &[30.0; 400], 50.0, 0.1), None);
     }
 }

@@ -30,7 +30,9 @@ const NEXT_POWER_LIMIT: f64 = 1.6;
 const NEARLY_AS_WELL: f64 = 1.5;
 
 /// Share of the way from the highest sample to the crossing of the two lines beside it that a peak is taken to reach.
-const TOWARDS_CROSSING: f64 = 0.75;
+const TOWARDS_CROSSING: f64 = 0.6;
+/// The flat side must fall by this many standard errors a sample.
+const FLAT_EVIDENCE: f64 = 4.0;
 
 /// Running sums from the top outwards: Σ y, Σ x y, Σ x² y, Σ x³ y, Σ y², x counted from the top.
 struct Sums(Vec<[f64; 5]>);
@@ -145,18 +147,24 @@ pub fn fit(data: &[f64], top: usize, sigma: f64) -> Option<PeakFit> {
 /// of it counts as uncertain.
 pub fn between_samples(data: &[f64], top: usize, sigma: f64) -> Option<(f64, f64)> {
     let at = |k: isize| data.get(usize::try_from(top as isize + k).ok()?).copied();
-    // The gap before (from -1 to 0) and the gap after (from 0 to 1) the highest sample.
-    let crossing = |first: isize| -> Option<f64> {
-        let (a0, a1, b0, b1) = (at(first - 1)?, at(first)?, at(first + 1)?, at(first + 2)?);
-        let (up, down) = (a1 - a0, b0 - b1);
-        let (steep, flat) = (up.max(down), up.min(down));
-        if flat < 2.0 * sigma || steep < 3.0 * flat {
+    // The gap on the side of `step` (-1: before, 1: after the highest sample), the steep line on one side of it and the flat
+    // one on the other; the flat one from three samples, since noise matters to it.
+    let crossing = |first: isize, steep_first: bool| -> Option<f64> {
+        let step = if steep_first { 1 } else { -1 };
+        let near = if steep_first { first } else { first + 1 };
+        let (a0, a1) = (at(near - step)?, at(near)?);
+        let (b0, b1, b2) = (at(near + step)?, at(near + 2 * step)?, at(near + 3 * step)?);
+        let (steep, flat) = (a1 - a0, (b0 - b2) / 2.0);
+        if flat < FLAT_EVIDENCE * sigma / 2f64.sqrt() || steep < 3.0 * flat {
             return None;
         }
-        let x = (b0 + down - a1) / (up + down);
-        (0.0..=1.0).contains(&x).then(|| a1 + up * x - at(0).unwrap_or(f64::INFINITY))
+        // x from the near end of the gap: a1 + steep x against the flat line, which is at its mean one sample beyond b0.
+        let line_at_gap = (b0 + b1 + b2) / 3.0 + 2.0 * flat;
+        let x = (line_at_gap - a1) / (steep + flat);
+        (0.0..=1.0).contains(&x).then(|| a1 + steep * x - at(0).unwrap_or(f64::INFINITY))
     };
-    let excess = crossing(-1).into_iter().chain(crossing(0)).fold(0.0, f64::max);
+    let all = [crossing(-1, true), crossing(0, true), crossing(-1, false), crossing(0, false)];
+    let excess = all.into_iter().flatten().fold(0.0, f64::max);
     (excess > 0.0).then_some((TOWARDS_CROSSING * excess, excess / 12f64.sqrt()))
 }
 
@@ -273,12 +281,12 @@ mod tests {
     #[test]
     fn a_peak_between_samples() {
         // A ramp of 50 a sample, reached at 70, meets a fall of 5 a sample from 100 at 70 + 50 x = 105 - 5 x, x = 35/55.
-        let (excess, u) = between_samples(&[0.0, 20.0, 70.0, 100.0, 95.0, 90.0], 3, 0.1).expect("excess");
+        let (excess, u) = between_samples(&[0.0, 20.0, 70.0, 100.0, 95.0, 90.0, 85.0], 3, 0.1).expect("excess");
         let crossing = 70.0 + 50.0 * 35.0 / 55.0 - 100.0;
-        assert!((excess - 0.75 * crossing).abs() < 1e-9 && (u - crossing / 12f64.sqrt()).abs() < 1e-9);
+        assert!((excess - 0.6 * crossing).abs() < 1e-9 && (u - crossing / 12f64.sqrt()).abs() < 1e-9);
         // A hump is no sharp peak, and noise is no slope.
         assert_eq!(between_samples(&[80.0, 90.0, 97.0, 100.0, 97.0, 90.0, 80.0], 3, 0.1), None);
-        assert_eq!(between_samples(&[0.0, 20.0, 70.0, 100.0, 99.9, 99.8], 3, 0.1), None);
+        assert_eq!(between_samples(&[0.0, 20.0, 70.0, 100.0, 99.9, 99.8, 99.7], 3, 0.1), None);
     }
 
     #[test]

@@ -90,7 +90,7 @@ pub fn condition(record: &Record<'_>, zero: &Zero) -> Result<Curve, Problem> {
     let tail = record.burn.cut_at_end.then(|| {
         let from = zero.burst.start - zero.window.start;
         let smoothed: Vec<f64> = time_s.iter().map(|t| at(&conditioned.time_s, &conditioned.thrust_n, *t)).collect();
-        tail::extrapolate(&time_s[from..], &zero.thrust_n[from..], &smoothed[from..], peak.thrust_n)
+        tail::extrapolate(&time_s[from..], &zero.thrust_n[from..], &smoothed[from..], peak.thrust_n, quiet_sd_n)
     });
     Ok(Curve {
         conditioned,
