@@ -5,12 +5,15 @@ mod checks;
 mod curve;
 mod figures;
 mod force;
+mod stand;
 mod zero;
 
 use crate::burn::events::{self, Event, Expectation, Segmentation};
 use crate::calibration::Calibration;
 use crate::condition::clipping;
-use crate::firing::{Burst, BurstKind, Conditioning, Curves, Firing, InputFile, Provenance, RunRecord, SCHEMA};
+use crate::firing::{
+    Burst, BurstKind, Conditioning, Curves, Firing, InputFile, Provenance, RunRecord, SCHEMA, StandRecord,
+};
 use crate::log::Log;
 use crate::problem::Problem;
 use crate::run::{self, Gravity, Orientation, RunSpec};
@@ -77,9 +80,10 @@ impl Record<'_> {
 pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
     let record = read_record(inputs)?;
     let zero = zero::correct(&record);
-    let curve = curve::condition(&record, &zero)?;
+    let stand = stand::find(&record, &zero);
+    let curve = curve::condition(&record, &zero, stand.as_ref())?;
     let mut figures = figures::measure(&record, &zero, &curve);
-    let checks = checks::all(&record, &zero, &curve, &figures);
+    let checks = checks::all(&record, &zero, &curve, &figures, stand.as_ref());
     let bursts = describe_bursts(&record, &figures);
     let curves = curve::for_display(&record, &zero, &curve, &figures);
     let mut findings = inputs.log.findings.clone();
@@ -98,12 +102,16 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
         burn: figures.times,
         bursts,
         motor_class: figures.class,
-        stand: None,
+        stand: stand.map(|s| StandRecord {
+            natural_frequency_hz: s.frequency_hz,
+            damping_ratio: Some(s.damping_ratio),
+            source: s.source.to_string(),
+        }),
         conditioning: Conditioning {
             sample_rate_hz: 1.0 / inputs.log.interval_s,
             noise_n: curve.quiet_sd_n,
             cutoff_hz: curve.conditioned.cutoff_hz,
-            filter: curve.describe(),
+            filter: curve.describe(stand.as_ref()),
             baseline_before_n: zero.baseline.before.map(|q| q.level * record.sign),
             baseline_after_n: zero.baseline.after.map(|q| q.level * record.sign),
         },

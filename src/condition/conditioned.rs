@@ -2,6 +2,7 @@
 //! long as the data allow; and the peak of that curve with the bias that noise and smoothing give it taken out.
 
 use crate::condition::adaptive::{self, Smoothed};
+use crate::condition::response::{self, Response};
 use crate::condition::{lowpass, peak, spectrum};
 use crate::run::Lowpass;
 /// Thrust conditioned over one burst and its surroundings.
@@ -122,6 +123,7 @@ pub fn condition(
     quiet_sd_n: f64,
     burst_s: f64,
     wanted: Option<Lowpass>,
+    stand: Option<Response>,
 ) -> Conditioned {
     let uneven = time_s.windows(2).any(|w| ((w[1] - w[0]) / interval_s - 1.0).abs() > 0.02);
     let (grid_s, mut value) =
@@ -131,12 +133,24 @@ pub fn condition(
     let rate_hz = 1.0 / interval_s;
     let mut noise_n = local_noise(&value, quiet_sd_n);
     let typical = median(noise_n.clone());
+    let mut autocorrelation = vec![1.0];
+    if let Some(response) = stand {
+        let highest = value.iter().copied().fold(f64::MIN_POSITIVE, f64::max);
+        let kernel = response::kernel(response, interval_s, typical / highest);
+        value = response::apply(&kernel, &value);
+        let product = |lag: usize| -> f64 { kernel.iter().zip(&kernel[lag..]).map(|(a, b)| a * b).sum() };
+        let power = product(0);
+        autocorrelation = (0..kernel.len()).map(|lag| product(lag) / power).collect();
+        // Roughness that the second differences showed is the stand's swing in part; the quiet noise is what is amplified.
+        noise_n = vec![quiet_sd_n * power.sqrt(); n];
+    }
     let cutoff_hz = match wanted {
         Some(Lowpass::Off) => None,
         Some(Lowpass::CutoffHz(hz)) => (hz < 0.5 * rate_hz).then_some(hz),
+        // The compensation has a band of its own.
+        None if stand.is_some() => None,
         None => choose_cutoff(&value, rate_hz, typical),
     };
-    let mut autocorrelation = vec![1.0];
     let (samples_n, sample_noise_n) = (value.clone(), noise_n.clone());
     if let Some(hz) = cutoff_hz {
         value = lowpass::zero_phase(&value, hz, rate_hz);
@@ -249,7 +263,7 @@ mod tests {
         let clean: Vec<f64> = t.iter().map(|&t| if (1.0..3.0).contains(&t) { 100.0 } else { 0.0 }).collect();
         let mut errors = Vec::new();
         for seed in 0..20 {
-            let c = condition(&t, &noisy(&clean, 4.0, seed), 0.001, 4.0, 2.0, None);
+            let c = condition(&t, &noisy(&clean, 4.0, seed), 0.001, 4.0, 2.0, None, None);
             let p = c.peak(0..c.time_s.len()).expect("peak");
             errors.push((p.thrust_n - 100.0) / 100.0);
         }
@@ -264,7 +278,7 @@ mod tests {
         let clean: Vec<f64> =
             t.iter().map(|&t| if (1.0..2.0).contains(&t) { 60.0 + 40.0 * (t - 1.0) } else { 0.0 }).collect();
         for seed in 0..10 {
-            let c = condition(&t, &noisy(&clean, 0.5, seed), 0.001, 0.5, 1.0, None);
+            let c = condition(&t, &noisy(&clean, 0.5, seed), 0.001, 0.5, 1.0, None, None);
             let p = c.peak(0..c.time_s.len()).expect("peak");
             assert!((p.thrust_n - 99.96).abs() < 0.5, "{p:?}");
         }
@@ -274,7 +288,7 @@ mod tests {
     fn a_low_cutoff_is_chosen_for_a_slow_burst_in_noise() {
         let t = time(6000, 1000.0);
         let clean: Vec<f64> = t.iter().map(|&t| 100.0 * (-(t - 3.0) * (t - 3.0) / 0.5).exp()).collect();
-        let c = condition(&t, &noisy(&clean, 2.0, 3), 0.001, 2.0, 3.0, None);
+        let c = condition(&t, &noisy(&clean, 2.0, 3), 0.001, 2.0, 3.0, None, None);
         let cutoff = c.cutoff_hz.expect("cutoff");
         assert!((2.0..60.0).contains(&cutoff), "{cutoff}");
     }
@@ -283,9 +297,9 @@ mod tests {
     fn an_override_is_taken_as_it_is() {
         let t = time(500, 100.0);
         let y: Vec<f64> = t.iter().map(|t| (t * 40.0).sin()).collect();
-        let off = condition(&t, &y, 0.01, 0.1, 5.0, Some(Lowpass::Off));
+        let off = condition(&t, &y, 0.01, 0.1, 5.0, Some(Lowpass::Off), None);
         assert_eq!(off.thrust_n, y);
-        let cut = condition(&t, &y, 0.01, 0.1, 5.0, Some(Lowpass::CutoffHz(20.0)));
+        let cut = condition(&t, &y, 0.01, 0.1, 5.0, Some(Lowpass::CutoffHz(20.0)), None);
         assert_eq!(cut.cutoff_hz, Some(20.0));
         assert_eq!(cut.thrust_n, lowpass::zero_phase(&y, 20.0, 100.0));
     }

@@ -9,5 +9,6 @@ pub mod glitch;
 pub mod lowpass;
 pub mod peak;
 pub mod quiet;
+pub mod response;
 pub mod ringing;
 pub mod spectrum;

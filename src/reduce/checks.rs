@@ -1,7 +1,7 @@
 //! The checks: each says what was looked at, what was found and what to do about it.
 
 use super::figures::{self, CRYSTAL_CLOCK, Figures};
-use super::{Record, bursts, curve::Curve, zero::Zero};
+use super::{Record, bursts, curve::Curve, stand::Stand, zero::Zero};
 use crate::firing::{BurstKind, Check, Status};
 use crate::run::Orientation;
 
@@ -24,6 +24,8 @@ mod limit {
     /// Noise as a share of peak: said, and called too much.
     pub const NOISE_CAUTION: f64 = 0.02;
     pub const NOISE_FAIL: f64 = 0.2;
+    /// Natural frequency of the stand, as a share of the sample rate, above which its swing is not followed.
+    pub const RINGING_SHARE: f64 = 0.25;
     /// Relative standard uncertainty of the force scale that is called poor.
     pub const SCALE: f64 = 0.005;
     /// Mass by weight shift against weighed mass, in standard uncertainties and as a share.
@@ -46,13 +48,14 @@ fn percent(x: f64) -> String {
     format!("{:.2} %", 100.0 * x)
 }
 
-pub fn all(record: &Record<'_>, zero: &Zero, curve: &Curve, figures: &Figures) -> Vec<Check> {
+pub fn all(record: &Record<'_>, zero: &Zero, curve: &Curve, figures: &Figures, stand: Option<&Stand>) -> Vec<Check> {
     let mut c = Checks(Vec::new());
     readings(&mut c, record);
     calibration(&mut c, record, figures);
     zeros(&mut c, record, zero, figures);
     sampling(&mut c, record, figures);
-    signal(&mut c, record, zero, curve, figures);
+    ringing(&mut c, record, stand);
+    signal(&mut c, record, curve, figures);
     mass(&mut c, record, zero, figures);
     check_loads(&mut c, record, figures);
     other_bursts(&mut c, record);
@@ -275,13 +278,38 @@ fn sampling(c: &mut Checks, record: &Record<'_>, figures: &Figures) {
     c.add("repairs", status, text);
 }
 
-fn signal(c: &mut Checks, record: &Record<'_>, zero: &Zero, curve: &Curve, figures: &Figures) {
-    let _ = zero;
-    c.add(
-        "ringing",
-        Status::Caution,
-        "the stand's own response is not taken out: where the curve swings after ignition, the highest swing is the stand's and not the motor's",
-    );
+fn ringing(c: &mut Checks, record: &Record<'_>, stand: Option<&Stand>) {
+    let rate_hz = 1.0 / record.interval_s();
+    match stand {
+        None => c.add("ringing", Status::Pass, "no oscillation of the stand found: nothing taken out"),
+        Some(s) if !s.matters() => c.add(
+            "ringing",
+            Status::Pass,
+            format!("the stand rings at {:.1} Hz when knocked, but not after ignition: nothing taken out", s.frequency_hz),
+        ),
+        Some(s) if s.frequency_hz > limit::RINGING_SHARE * rate_hz => c.add(
+            "ringing",
+            Status::Caution,
+            format!(
+                "the stand rings at {:.1} Hz, too fast for {rate_hz:.0} samples a second: peak and rise may be the stand's. Log faster",
+                s.frequency_hz
+            ),
+        ),
+        Some(s) => c.add(
+            "ringing",
+            Status::Caution,
+            format!(
+                "the stand rings at {:.2} Hz, damping ratio {:.3} ({}){}: its response is taken out of the curve; peak, rise and crossings rest on that",
+                s.frequency_hz,
+                s.damping_ratio,
+                s.source,
+                s.share_of_peak.map_or(String::new(), |a| format!(", swinging by {} of peak", percent(a)))
+            ),
+        ),
+    }
+}
+
+fn signal(c: &mut Checks, record: &Record<'_>, curve: &Curve, figures: &Figures) {
     let noise = curve.quiet_sd_n / figures.peak_n;
     let text = format!("noise of single samples {} of peak", percent(noise));
     if noise > limit::NOISE_FAIL {

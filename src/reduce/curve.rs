@@ -1,9 +1,10 @@
 //! The thrust curve: conditioned, reconstructed inside the cells of an averaging converter, continued beyond a cut end.
 
-use super::{Record, figures::Figures, zero, zero::Zero};
+use super::{Record, figures::Figures, stand::Stand, zero, zero::Zero};
 use crate::burn::tail::{self, Tail};
 use crate::condition::averaging::{self, Edge};
 use crate::condition::conditioned::{self, Conditioned, Peak};
+use crate::condition::response::Response;
 use crate::firing::Curves;
 use crate::measure::integral;
 use crate::problem::Problem;
@@ -26,13 +27,22 @@ pub struct Curve {
 
 impl Curve {
     /// The conditioning in words.
-    pub fn describe(&self) -> String {
+    pub fn describe(&self, stand: Option<&Stand>) -> String {
         let mut words = Vec::new();
         if self.conditioned.resampled {
             words.push("put on an even grid by straight lines".to_string());
         }
+        if let Some(stand) = stand.filter(|s| s.matters()) {
+            words.push(format!(
+                "response of the stand taken out ({:.2} Hz, damping ratio {:.3}, {})",
+                stand.frequency_hz, stand.damping_ratio, stand.source
+            ));
+        }
         match self.conditioned.cutoff_hz {
             Some(hz) => words.push(format!("zero-phase Butterworth low-pass, second order run both ways, {hz:.3} Hz")),
+            None if stand.is_some_and(Stand::matters) => {
+                words.push("the band ends where the compensation's smoothing ends it".to_string())
+            }
             None => words.push("no low-pass: signal reaches up to the end of the band".to_string()),
         }
         if self.conditioned.smoothed {
@@ -48,7 +58,7 @@ impl Curve {
 /// Above this many cells the features are long against a cell, and reconstruction changes nothing.
 const MOST_CELLS: usize = 20_000;
 
-pub fn condition(record: &Record<'_>, zero: &Zero) -> Result<Curve, Problem> {
+pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Result<Curve, Problem> {
     let time_s = &record.time_s[zero.window.clone()];
     let quiet_sd_n = zero::sample_noise(zero);
     let burst_s = [record.time_s[record.burn.start], record.time_s[zero.burst.end - 1]];
@@ -59,6 +69,9 @@ pub fn condition(record: &Record<'_>, zero: &Zero) -> Result<Curve, Problem> {
         quiet_sd_n,
         record.time_s[record.burn.end - 1] - record.time_s[record.burn.start],
         record.inputs.run.reduction.lowpass,
+        stand
+            .filter(|s| s.matters())
+            .map(|s| Response { frequency_hz: s.frequency_hz, damping_ratio: s.damping_ratio }),
     );
     let first = conditioned.time_s.partition_point(|t| *t < burst_s[0]);
     let last = conditioned.time_s.partition_point(|t| *t <= burst_s[1]);
