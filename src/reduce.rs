@@ -185,6 +185,7 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
         }
     }
     widen_to_overrides(inputs, &time_s, &mut burn);
+    bursts::join_quiet(&mut segmentation, &burn);
     let (mut clipped, mut clipped_at) = (Vec::new(), None);
     for channel in &channels {
         for found in clipping::find_clipping(&channel.column.values) {

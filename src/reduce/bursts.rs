@@ -53,6 +53,26 @@ pub fn choose(
         })
 }
 
+/// Drops events too small beside the burn to be told from the record's own unrest, and joins the quiet on either side: a tail
+/// that fades under the search's threshold leaves such events.
+pub fn join_quiet(segmentation: &mut Segmentation, burn: &Event) {
+    let small = |e: &Event| e.start != burn.start && e.peak.abs() < LEAST_PEAK * burn.peak.abs();
+    for event in segmentation.events.iter().filter(|e| small(e)) {
+        let before = segmentation.quiet.iter().position(|q| q.end == event.start);
+        let after = segmentation.quiet.iter().position(|q| q.start == event.end);
+        match (before, after) {
+            (Some(b), Some(a)) => {
+                segmentation.quiet[b].end = segmentation.quiet[a].end;
+                segmentation.quiet.remove(a);
+            }
+            (Some(b), None) => segmentation.quiet[b].end = event.end,
+            (None, Some(a)) => segmentation.quiet[a].start = event.start,
+            (None, None) => {}
+        }
+    }
+    segmentation.events.retain(|e| !small(e));
+}
+
 /// What a burst other than the burn is; `sign` is that of thrust.
 pub fn kind(event: &Event, burn: &Event, time_s: &[f64], loads: &[CheckLoadSpec], sign: f64) -> BurstKind {
     if event.start == burn.start {

@@ -1,6 +1,7 @@
 //! The stand's oscillation: told in run.toml, or found after ignition, after burn-out or in a knock.
 
 use super::{Record, bursts, zero::Zero};
+use crate::condition::response::{self, Response};
 use crate::condition::ringing::{self, Ring};
 use crate::firing::BurstKind;
 
@@ -22,7 +23,16 @@ const STRETCHES: [(f64, f64); 4] = [(0.008, 0.15), (0.02, 0.25), (0.04, 0.4), (0
 /// Oscillations slower than this are not told from the motor's own course, Hz.
 const SLOWEST_HZ: f64 = 8.0;
 /// A free oscillation dies slowly; what dies faster may be the motor's own course.
-const MOST_DAMPING: f64 = 0.12;
+const MOST_DAMPING: f64 = 0.08;
+/// Nor does it go on for ever: what hardly dies is driven, by the motor or by the mains.
+const LEAST_DAMPING: f64 = 0.003;
+/// Frequencies found in two stretches must agree within this share: a free oscillation keeps its own, a course of thrust does not.
+const AGREEMENT: f64 = 0.03;
+/// Cycles over which the curve must be calmer without the oscillation, the share of a cycle averaged before its ups and downs
+/// are added up, and by how many amplitudes these must shrink.
+const CONFIRMED_CYCLES: f64 = 8.0;
+const BLOCK_OF_CYCLE: f64 = 0.12;
+const CALMER: f64 = 1.5;
 /// Oscillations smaller than this share of peak change no figure.
 const LEAST_SHARE: f64 = 0.004;
 
@@ -48,7 +58,7 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     let noise = super::zero::sample_noise(zero);
     let burst_s = t[inside.end - 1] - t[inside.start];
     let seen = |time_s: &[f64], force_n: &[f64], from_s: f64, limit_s: f64| -> Option<Ring> {
-        STRETCHES
+        let rings: Vec<Ring> = STRETCHES
             .iter()
             .filter_map(|(begin, length)| {
                 let a = time_s.partition_point(|x| *x < from_s + begin);
@@ -58,10 +68,23 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
                 }
                 ringing::find(&time_s[a..b], &force_n[a..b], noise, SLOWEST_HZ)
             })
-            .filter(|r| r.damping_ratio < MOST_DAMPING && r.amplitude > LEAST_SHARE * highest)
+            .filter(|r| (LEAST_DAMPING..MOST_DAMPING).contains(&r.damping_ratio) && r.amplitude > LEAST_SHARE * highest)
+            .collect();
+        let alike = |a: &Ring, b: &Ring| (a.frequency_hz / b.frequency_hz - 1.0).abs() < AGREEMENT;
+        rings
+            .iter()
+            .filter(|r| rings.iter().filter(|o| alike(r, o)).count() >= 2)
             .min_by(|a, b| (a.frequency_u_hz / a.frequency_hz).total_cmp(&(b.frequency_u_hz / b.frequency_hz)))
+            .copied()
     };
-    if let Some(ring) = seen(t, f, t[half], t[half] + 0.6 * burst_s) {
+    if let Some(ring) = seen(t, f, t[half], t[half] + 0.6 * burst_s)
+        && confirmed(
+            &f[half.saturating_sub(((0.05 / record.interval_s()) as usize).max(8))..inside.end],
+            record,
+            &ring,
+            noise / highest,
+        )
+    {
         return Some(of(ring, "ring after ignition", Some(ring.amplitude / highest)));
     }
     let knock = record
@@ -84,6 +107,31 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
         });
     // A knock shows the stand's frequency, but where ignition shows no ring there is nothing to take out.
     knock.map(|ring| of(ring, "ring of a knock", Some(0.0)))
+}
+
+/// Whether taking the oscillation out leaves a calmer curve: a stand that swings overshoots, so without its swing the curve
+/// goes up and down less and stands no higher. What merely looked like a swing (a spike that dies away, a hump) does not
+/// pass this, since undoing a swing that was not there makes one.
+fn confirmed(force_n: &[f64], record: &Record<'_>, ring: &Ring, noise_share: f64) -> bool {
+    let dt = record.interval_s();
+    let length = ((CONFIRMED_CYCLES / ring.frequency_hz / dt) as usize).min(force_n.len());
+    let block = ((BLOCK_OF_CYCLE / ring.frequency_hz / dt) as usize).max(1);
+    let kernel = response::kernel(
+        Response { frequency_hz: ring.frequency_hz, damping_ratio: ring.damping_ratio },
+        dt,
+        noise_share,
+    );
+    let before = &force_n[..length];
+    let after = response::apply(&kernel, before);
+    let course = |f: &[f64]| -> (f64, f64) {
+        let means: Vec<f64> = f.chunks(block).map(|c| c.iter().sum::<f64>() / c.len() as f64).collect();
+        let ups_and_downs = means.windows(2).map(|w| (w[1] - w[0]).abs()).sum();
+        (ups_and_downs, means.iter().copied().fold(f64::MIN, f64::max))
+    };
+    // The last samples lean on what lies beyond the stretch.
+    let end = length.saturating_sub(kernel.len()).max(1);
+    let ((moved, top), (moved_after, top_after)) = (course(&before[..end]), course(&after[..end]));
+    moved_after < moved - CALMER * ring.amplitude && top_after < top
 }
 
 fn of(ring: Ring, source: &'static str, share_of_peak: Option<f64>) -> Stand {
