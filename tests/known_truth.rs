@@ -246,9 +246,11 @@ fn half_a_second_before_and_a_cut_tail_leave_the_impulse_standing() {
     kind_holds(Kind::Truncated, 20, &rows(each(0.005), each(0.005), None));
 }
 
+/// The swing makes the naive peak 8 to 90 % high. Taking it out ends the band at some 1.5 ms, which rounds a sharp spike right
+/// after a rise of a few milliseconds by up to 1.2 %; half of the firings come within 0.1 %.
 #[test]
 fn a_ringing_stand_is_seen_through() {
-    kind_holds(Kind::Ringing, 20, &rows(each(0.0015), each(0.005), Some(each(0.007))));
+    kind_holds(Kind::Ringing, 20, &rows(each(0.0015), both(0.015, 0.001), Some(each(0.003))));
 }
 
 /// Largest relative errors of total impulse, peak thrust and burn time for the sample runs, by what each run allows.

@@ -249,8 +249,17 @@ impl Finder<'_> {
             return None;
         }
         let level = b.mean(n - least..n);
+        // What still moves by much of its own height over a good part of the burst is a tail and no new zero.
+        let long = ((n - start) / 6).max(least);
+        let base = b.value[..start.max(1)].last().copied().unwrap_or(0.0);
+        let half = long / 2;
+        let change = b.mean(n - half..n) - b.mean(n - 2 * half..n - half);
+        let allowed = 0.05 * (level - base).abs() + 4.0 * self.noise * (2.0 / half as f64).sqrt();
+        if change.abs() > allowed && change * (level - base) < 0.0 {
+            return None;
+        }
         // A level as high as much of the burst is thrust that lasts to the end of the record, not a new zero.
-        if (level - b.value[..start.max(1)].last().copied().unwrap_or(0.0)).abs() > 0.25 * largest {
+        if (level - base).abs() > 0.25 * largest {
             return None;
         }
         let mut from = n - least;
@@ -349,6 +358,22 @@ mod tests {
         let s = find(&t, &y, 0.002, PLAIN);
         assert_eq!(s.events.len(), 1);
         assert!(s.events[0].cut_at_end && !s.events[0].cut_at_start);
+    }
+
+    #[test]
+    fn a_long_tail_that_is_nearly_level_at_the_end_is_no_new_zero() {
+        let tail = |t: f64| {
+            if t < 0.6 {
+                0.0
+            } else if t < 6.0 {
+                150.0
+            } else {
+                120.0 * (-(t - 6.0) / 4.0).exp()
+            }
+        };
+        let (t, y) = record(460.0, 14.2, 3.0, tail);
+        let s = find(&t, &y, 1.0 / 460.0, PLAIN);
+        assert!(s.events.last().is_some_and(|e| e.cut_at_end), "{:?}", s.events);
     }
 
     #[test]

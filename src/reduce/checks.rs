@@ -282,18 +282,27 @@ fn ringing(c: &mut Checks, record: &Record<'_>, stand: Option<&Stand>) {
     let rate_hz = 1.0 / record.interval_s();
     match stand {
         None => c.add("ringing", Status::Pass, "no oscillation of the stand found: nothing taken out"),
-        Some(s) if !s.matters() => c.add(
-            "ringing",
-            Status::Pass,
-            format!("the stand rings at {:.1} Hz when knocked, but not after ignition: nothing taken out", s.frequency_hz),
-        ),
-        Some(s) if s.frequency_hz > limit::RINGING_SHARE * rate_hz => c.add(
+        Some(s) if s.taken_out && s.frequency_hz > limit::RINGING_SHARE * rate_hz => c.add(
             "ringing",
             Status::Caution,
             format!(
                 "the stand rings at {:.1} Hz, too fast for {rate_hz:.0} samples a second: peak and rise may be the stand's. Log faster",
                 s.frequency_hz
             ),
+        ),
+        Some(s) if !s.taken_out && s.share_of_peak.is_some_and(|a| a > 0.0) => c.add(
+            "ringing",
+            Status::Caution,
+            format!(
+                "a swing at {:.1} Hz by {} of peak after ignition, which may be the stand's or the motor's own: not taken out, so peak and rise may be high by as much. Give natural_frequency and damping_ratio from a tap test under [stand]",
+                s.frequency_hz,
+                percent(s.share_of_peak.unwrap_or(0.0))
+            ),
+        ),
+        Some(s) if !s.taken_out => c.add(
+            "ringing",
+            Status::Pass,
+            format!("the stand rings at {:.1} Hz when knocked, but not after ignition: nothing taken out", s.frequency_hz),
         ),
         Some(s) => c.add(
             "ringing",

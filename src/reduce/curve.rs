@@ -32,7 +32,7 @@ impl Curve {
         if self.conditioned.resampled {
             words.push("put on an even grid by straight lines".to_string());
         }
-        if let Some(stand) = stand.filter(|s| s.matters()) {
+        if let Some(stand) = stand.filter(|s| s.taken_out) {
             words.push(format!(
                 "response of the stand taken out ({:.2} Hz, damping ratio {:.3}, {})",
                 stand.frequency_hz, stand.damping_ratio, stand.source
@@ -40,7 +40,7 @@ impl Curve {
         }
         match self.conditioned.cutoff_hz {
             Some(hz) => words.push(format!("zero-phase Butterworth low-pass, second order run both ways, {hz:.3} Hz")),
-            None if stand.is_some_and(Stand::matters) => {
+            None if stand.is_some_and(|s| s.taken_out) => {
                 words.push("the band ends where the compensation's smoothing ends it".to_string())
             }
             None => words.push("no low-pass: signal reaches up to the end of the band".to_string()),
@@ -70,7 +70,7 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
         record.time_s[record.burn.end - 1] - record.time_s[record.burn.start],
         record.inputs.run.reduction.lowpass,
         stand
-            .filter(|s| s.matters())
+            .filter(|s| s.taken_out)
             .map(|s| Response { frequency_hz: s.frequency_hz, damping_ratio: s.damping_ratio }),
     );
     let first = conditioned.time_s.partition_point(|t| *t < burst_s[0]);

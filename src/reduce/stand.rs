@@ -15,6 +15,8 @@ pub struct Stand {
     pub source: &'static str,
     /// Amplitude after ignition as a share of peak, where it was seen there.
     pub share_of_peak: Option<f64>,
+    /// Whether the response is taken out of the curve.
+    pub taken_out: bool,
 }
 
 /// Stretches looked at after an instant: begin and length, s. A rise must be over by the begin, and the motor's own course
@@ -31,8 +33,12 @@ const AGREEMENT: f64 = 0.03;
 /// Cycles over which the curve must be calmer without the oscillation, the share of a cycle averaged before its ups and downs
 /// are added up, and by how many amplitudes these must shrink.
 const CONFIRMED_CYCLES: f64 = 8.0;
+/// Cycles before the rise that are looked at with it.
+const CONFIRMED_LEAD: f64 = 2.0;
 const BLOCK_OF_CYCLE: f64 = 0.12;
 const CALMER: f64 = 1.5;
+/// By how many amplitudes the top of the curve must come down with the overshoot.
+const LOWER: f64 = 0.3;
 /// Oscillations smaller than this share of peak change no figure.
 const LEAST_SHARE: f64 = 0.004;
 
@@ -48,6 +54,7 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
             damping_u: told.damping_ratio.and_then(|d| d.standard_uncertainty).unwrap_or(0.3 * damping),
             source: "run.toml",
             share_of_peak: None,
+            taken_out: true,
         });
     }
     let t = &record.time_s[zero.window.clone()];
@@ -77,15 +84,10 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
             .min_by(|a, b| (a.frequency_u_hz / a.frequency_hz).total_cmp(&(b.frequency_u_hz / b.frequency_hz)))
             .copied()
     };
-    if let Some(ring) = seen(t, f, t[half], t[half] + 0.6 * burst_s)
-        && confirmed(
-            &f[half.saturating_sub(((0.05 / record.interval_s()) as usize).max(8))..inside.end],
-            record,
-            &ring,
-            noise / highest,
-        )
-    {
-        return Some(of(ring, "ring after ignition", Some(ring.amplitude / highest)));
+    if let Some(ring) = seen(t, f, t[half], t[half] + 0.6 * burst_s) {
+        let lead = ((CONFIRMED_LEAD / ring.frequency_hz / record.interval_s()) as usize).max(8);
+        let sure = confirmed(&f[half.saturating_sub(lead)..inside.end], record, &ring, noise / highest);
+        return Some(of(ring, "ring after ignition", Some(ring.amplitude / highest), sure));
     }
     let knock = record
         .segmentation
@@ -106,7 +108,7 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
             )
         });
     // A knock shows the stand's frequency, but where ignition shows no ring there is nothing to take out.
-    knock.map(|ring| of(ring, "ring of a knock", Some(0.0)))
+    knock.map(|ring| of(ring, "ring of a knock", Some(0.0), false))
 }
 
 /// Whether taking the oscillation out leaves a calmer curve: a stand that swings overshoots, so without its swing the curve
@@ -131,10 +133,10 @@ fn confirmed(force_n: &[f64], record: &Record<'_>, ring: &Ring, noise_share: f64
     // The last samples lean on what lies beyond the stretch.
     let end = length.saturating_sub(kernel.len()).max(1);
     let ((moved, top), (moved_after, top_after)) = (course(&before[..end]), course(&after[..end]));
-    moved_after < moved - CALMER * ring.amplitude && top_after < top
+    moved_after < moved - CALMER * ring.amplitude && top_after < top - LOWER * ring.amplitude
 }
 
-fn of(ring: Ring, source: &'static str, share_of_peak: Option<f64>) -> Stand {
+fn of(ring: Ring, source: &'static str, share_of_peak: Option<f64>, taken_out: bool) -> Stand {
     Stand {
         frequency_hz: ring.frequency_hz,
         frequency_u_hz: ring.frequency_u_hz,
@@ -142,12 +144,6 @@ fn of(ring: Ring, source: &'static str, share_of_peak: Option<f64>) -> Stand {
         damping_u: ring.damping_u,
         source,
         share_of_peak,
-    }
-}
-
-impl Stand {
-    /// Whether the response is to be taken out of the curve.
-    pub fn matters(&self) -> bool {
-        self.share_of_peak.is_none_or(|s| s > 0.0)
+        taken_out,
     }
 }

@@ -70,7 +70,7 @@ fn crate_cell() -> Cell {
 }
 
 fn trough() -> Stand {
-    Stand { resonance: Some((62.0, 0.035)), ..Stand::default() }
+    Stand { resonance: Some((62.0, 0.035)), resonance_told: true, ..Stand::default() }
 }
 
 fn post() -> Stand {
@@ -179,7 +179,6 @@ pub fn firings() -> Vec<Scenario> {
     // Level and pace: the pour's own, times a motor's own.
     let mut bw1_1 = on_trough("BW1-1", "BW1", "2026-05-09", 101, white(1.000, 1.004));
     bw1_1.ignition = true;
-    bw1_1.stand.resonance_told = true;
     bw1_1.expelled_extra_kg = Some(0.0062);
     bw1_1.tags.push(("cure_days".into(), "9".into()));
     bw1_1.tags.push(("batch_mass".into(), "\"1.9 kg\"".into()));
