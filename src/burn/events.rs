@@ -116,7 +116,8 @@ pub fn find(time_s: &[f64], data: &[f64], interval_s: f64, expectation: Expectat
         blocks.value.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(*v), h.max(*v)));
     let range = highest - lowest;
     if range <= 0.0 {
-        return Segmentation { quiet: vec![0..data.len()], block: blocks.size, ..Segmentation::default() };
+        let quiet = std::iter::once(0..data.len()).collect();
+        return Segmentation { quiet, block: blocks.size, ..Segmentation::default() };
     }
     let quiet_blocks = ((QUIET_S / block_s).ceil() as usize).clamp(4, 60).min(n / 2).max(2);
     let noise = block_noise(&blocks, quiet_blocks, range);

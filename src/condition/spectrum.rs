@@ -45,7 +45,7 @@ pub fn welch(data: &[f64], rate_hz: f64, segment: usize) -> Option<Spectrum> {
     for (k, d) in density.iter_mut().enumerate() {
         *d /= f64::from(count);
         // Negative frequencies are folded onto positive ones; zero and Nyquist have no mirror image.
-        if k > 0 && !(segment % 2 == 0 && k == bins - 1) {
+        if k > 0 && !(segment.is_multiple_of(2) && k == bins - 1) {
             *d *= 2.0;
         }
     }

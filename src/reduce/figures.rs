@@ -47,10 +47,6 @@ pub struct Figures {
     relative_u: f64,
     zero_u_n: f64,
     noise_u_n: f64,
-    /// A start or an end that lies outside the record.
-    pub start_missing: bool,
-    pub end_extrapolated: bool,
-    pub end_missing: bool,
     /// Mass that the weight shift speaks for, where it was the source.
     pub mass_from_shift: bool,
 }
@@ -172,6 +168,18 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         thrust_end_s: thrust_end_s.max(end_s),
     };
 
+    if burn.start_missing {
+        findings.push("the record starts inside the burn: burn time runs from its first sample".to_string());
+    }
+    if burn.end_extrapolated {
+        findings
+            .push("the record ends above 5 % of peak: the end of the burn lies on the extrapolated tail".to_string());
+    }
+    if burn.end_missing {
+        findings.push(
+            "the record ends above 5 % of peak and no tail can be told: burn time runs to its last sample".to_string(),
+        );
+    }
     let tail_impulse = curve.tail.map_or(0.0, |tail| tail.impulse);
     let total_impulse = integral::trapezoid(bt, bf) + tail_impulse;
     let last_s = bt[bt.len() - 1];
@@ -306,9 +314,6 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         relative_u,
         zero_u_n,
         noise_u_n: curve.peak.noise_u_n,
-        start_missing: burn.start_missing,
-        end_extrapolated: burn.end_extrapolated,
-        end_missing: burn.end_missing,
         mass_from_shift,
     }
 }
