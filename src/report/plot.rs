@@ -75,7 +75,8 @@ pub fn thrust_svg(firing: &Firing, curves: &Curves, units: Units) -> Result<Stri
     peak(&canvas, &frame, firing, curves, units)?;
     legend(&canvas, pressure.is_some())?;
     canvas.finish()?;
-    Ok(svg)
+    // A line of many short pieces must not sprout spikes where noise turns it back on itself.
+    Ok(svg.replace("<polyline ", "<polyline stroke-linejoin=\"round\" "))
 }
 
 /// The same picture as PNG.
