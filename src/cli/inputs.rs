@@ -3,7 +3,7 @@
 use super::runs::{Source, unreadable};
 use crate::burn::events::{self, Expectation};
 use crate::calibration;
-use crate::condition::quiet;
+use crate::condition::{quiet, ringing};
 use crate::load;
 use crate::log::{Log, ReadRequest};
 use crate::problem::Problem;
@@ -131,10 +131,20 @@ pub fn findings(log: &Log) -> InspectFindings {
                 continue;
             };
             found.bursts.push((column.name.clone(), *start_s, *end_s, event.peak));
+            if found.resonance_hz.is_none() {
+                let (t, y) = (&log.time_s[event.start..event.end], &values[event.start..event.end]);
+                let noise = found.noise.last().map_or(0.0, |(_, sd)| *sd);
+                let risen = y.iter().position(|v| (v - event.level_before) / event.peak > 0.5).unwrap_or(0);
+                let limit_s = t[risen] + 0.6 * (end_s - start_s);
+                found.resonance_hz = ringing::after(t, y, noise, t[risen], limit_s, LEAST_RING * event.peak.abs())
+                    .map(|ring| ring.frequency_hz);
+            }
         }
     }
     found
 }
 
+/// A swing smaller than this share of the burst's peak is not spoken of.
+const LEAST_RING: f64 = 0.01;
 /// Fewer samples tell nothing of noise and bursts.
 const FEWEST_SAMPLES: usize = 16;

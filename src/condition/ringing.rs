@@ -139,6 +139,47 @@ pub fn find(time_s: &[f64], data: &[f64], noise: f64, low_hz: f64) -> Option<Rin
     (ring.frequency_u_hz < 0.05 * hz).then_some(ring)
 }
 
+/// Stretches looked at after an instant: begin and length, s. A rise must be over by the begin, and the motor's own course
+/// must stay smooth over the length.
+const STRETCHES: [(f64, f64); 4] = [(0.008, 0.15), (0.02, 0.25), (0.04, 0.4), (0.02, 0.6)];
+/// Oscillations slower than this are not told from the motor's own course, Hz.
+const SLOWEST_HZ: f64 = 8.0;
+/// A free oscillation dies slowly; what dies faster may be the motor's own course.
+const MOST_DAMPING: f64 = 0.08;
+/// Nor does it go on for ever: what hardly dies is driven, by the motor or by the mains.
+const LEAST_DAMPING: f64 = 0.003;
+/// Frequencies found in two stretches must agree within this share: a free oscillation keeps its own, a course of thrust does not.
+const AGREEMENT: f64 = 0.03;
+/// Looks for the free oscillation after an instant, up to `limit_s`: one that two stretches agree on, larger than
+/// `least_amplitude`.
+pub fn after(
+    time_s: &[f64],
+    data: &[f64],
+    noise: f64,
+    from_s: f64,
+    limit_s: f64,
+    least_amplitude: f64,
+) -> Option<Ring> {
+    let rings: Vec<Ring> = STRETCHES
+        .iter()
+        .filter_map(|(begin, length)| {
+            let a = time_s.partition_point(|x| *x < from_s + begin);
+            let b = time_s.partition_point(|x| *x <= (from_s + begin + length).min(limit_s));
+            if b < a + 24 {
+                return None;
+            }
+            find(&time_s[a..b], &data[a..b], noise, SLOWEST_HZ)
+        })
+        .filter(|r| (LEAST_DAMPING..MOST_DAMPING).contains(&r.damping_ratio) && r.amplitude > least_amplitude)
+        .collect();
+    let alike = |a: &Ring, b: &Ring| (a.frequency_hz / b.frequency_hz - 1.0).abs() < AGREEMENT;
+    rings
+        .iter()
+        .filter(|r| rings.iter().filter(|o| alike(r, o)).count() >= 2)
+        .min_by(|a, b| (a.frequency_u_hz / a.frequency_hz).total_cmp(&(b.frequency_u_hz / b.frequency_hz)))
+        .copied()
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;

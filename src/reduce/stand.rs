@@ -19,17 +19,6 @@ pub struct Stand {
     pub taken_out: bool,
 }
 
-/// Stretches looked at after an instant: begin and length, s. A rise must be over by the begin, and the motor's own course
-/// must stay smooth over the length.
-const STRETCHES: [(f64, f64); 4] = [(0.008, 0.15), (0.02, 0.25), (0.04, 0.4), (0.02, 0.6)];
-/// Oscillations slower than this are not told from the motor's own course, Hz.
-const SLOWEST_HZ: f64 = 8.0;
-/// A free oscillation dies slowly; what dies faster may be the motor's own course.
-const MOST_DAMPING: f64 = 0.08;
-/// Nor does it go on for ever: what hardly dies is driven, by the motor or by the mains.
-const LEAST_DAMPING: f64 = 0.003;
-/// Frequencies found in two stretches must agree within this share: a free oscillation keeps its own, a course of thrust does not.
-const AGREEMENT: f64 = 0.03;
 /// Cycles over which the curve must be calmer without the oscillation, the share of a cycle averaged before its ups and downs
 /// are added up, and by how many amplitudes these must shrink.
 const CONFIRMED_CYCLES: f64 = 8.0;
@@ -65,24 +54,7 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     let noise = super::zero::sample_noise(zero);
     let burst_s = t[inside.end - 1] - t[inside.start];
     let seen = |time_s: &[f64], force_n: &[f64], from_s: f64, limit_s: f64| -> Option<Ring> {
-        let rings: Vec<Ring> = STRETCHES
-            .iter()
-            .filter_map(|(begin, length)| {
-                let a = time_s.partition_point(|x| *x < from_s + begin);
-                let b = time_s.partition_point(|x| *x <= (from_s + begin + length).min(limit_s));
-                if b < a + 24 {
-                    return None;
-                }
-                ringing::find(&time_s[a..b], &force_n[a..b], noise, SLOWEST_HZ)
-            })
-            .filter(|r| (LEAST_DAMPING..MOST_DAMPING).contains(&r.damping_ratio) && r.amplitude > LEAST_SHARE * highest)
-            .collect();
-        let alike = |a: &Ring, b: &Ring| (a.frequency_hz / b.frequency_hz - 1.0).abs() < AGREEMENT;
-        rings
-            .iter()
-            .filter(|r| rings.iter().filter(|o| alike(r, o)).count() >= 2)
-            .min_by(|a, b| (a.frequency_u_hz / a.frequency_hz).total_cmp(&(b.frequency_u_hz / b.frequency_hz)))
-            .copied()
+        ringing::after(time_s, force_n, noise, from_s, limit_s, LEAST_SHARE * highest)
     };
     if let Some(ring) = seen(t, f, t[half], t[half] + 0.6 * burst_s) {
         let lead = ((CONFIRMED_LEAD / ring.frequency_hz / record.interval_s()) as usize).max(8);
