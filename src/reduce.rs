@@ -5,6 +5,7 @@ mod checks;
 mod curve;
 mod figures;
 mod force;
+mod sources;
 mod stand;
 mod zero;
 

@@ -1,7 +1,8 @@
 //! Every figure of the firing with its uncertainty.
 
 use super::curve::{self, Curve};
-use super::zero::{self, Zero};
+use super::sources::Work;
+use super::zero::Zero;
 use super::{Record, force};
 use crate::burn::crossings::{self, Crossing};
 use crate::firing::{BudgetLine, BurnTimes, Figure, MotorClass, Quantities};
@@ -16,7 +17,7 @@ pub const BURN_LEVEL: f64 = 0.05;
 /// Action time between crossings of this share (Sutton and Biblarz, Rocket Propulsion Elements; from memory).
 pub const ACTION_LEVEL: f64 = 0.10;
 /// Rise time runs from the action level up to this share of peak.
-const RISEN_LEVEL: f64 = 0.90;
+pub(super) const RISEN_LEVEL: f64 = 0.90;
 /// Initial thrust is the mean over the first part of the burn, s (common practice, no source).
 const INITIAL_S: f64 = 0.5;
 /// Standard gravity, m/s² (exact; 3rd CGPM, 1901).
@@ -27,11 +28,11 @@ pub const CRYSTAL_CLOCK: f64 = 1e-4;
 const MEASURABLE: f64 = 0.002;
 
 /// Error of the smoothed curve against the standard error that noise alone leaves in it; by simulated firings.
-const SMOOTHING_BIAS: f64 = 4.0;
+pub(super) const SMOOTHING_BIAS: f64 = 4.0;
 /// Standard uncertainty of the foot of a fast rise or fall in sample intervals, and the share of peak per interval from which
 /// on it counts in full; by simulated firings.
-const EDGE_SHARE: f64 = 0.15;
-const STEEP_SHARE: f64 = 0.2;
+pub(super) const EDGE_SHARE: f64 = 0.15;
+pub(super) const STEEP_SHARE: f64 = 0.2;
 
 /// All that is read from the curve.
 pub struct Figures {
@@ -59,12 +60,12 @@ impl Figures {
 }
 
 /// Crossings of one level at both ends of the burn, and where they came from.
-struct Ends {
-    start: Crossing,
-    end: Crossing,
-    start_missing: bool,
-    end_extrapolated: bool,
-    end_missing: bool,
+pub(super) struct Ends {
+    pub start: Crossing,
+    pub end: Crossing,
+    pub start_missing: bool,
+    pub end_extrapolated: bool,
+    pub end_missing: bool,
 }
 
 fn ends(curve: &Curve, level_n: f64, override_s: [Option<f64>; 2]) -> Ends {
@@ -365,272 +366,4 @@ fn propellant_mass(
         "propellant mass {kg:.4} kg from the weight that left the stand: not independent of the cell, and drift of the zero counts as mass"
     ));
     Some((kg, Some(u), Some("weight shift".to_string())))
-}
-
-/// What the effects are computed from.
-struct Work<'a> {
-    record: &'a Record<'a>,
-    zero: &'a Zero,
-    curve: &'a Curve,
-    bt: &'a [f64],
-    bf: &'a [f64],
-    burn: &'a Ends,
-    action: &'a Ends,
-    total_impulse: f64,
-    burn_impulse: f64,
-    burn_time: f64,
-    action_time: f64,
-    initial: f64,
-    initial_s: f64,
-    rise_time: Option<f64>,
-    delay: Option<f64>,
-}
-
-impl Work<'_> {
-    /// All effects, and whether the error of the scale is known.
-    fn effects(&self, delay_u: Option<f64>, mass_u: Option<Option<f64>>) -> (Vec<Effect>, bool) {
-        let (mut effects, known) = self.scale();
-        effects.extend(self.zero());
-        effects.extend(self.noise());
-        effects.extend(self.ends(delay_u));
-        effects.push(self.clock());
-        if let Some(Some(u)) = mass_u
-            && self.record.inputs.run.motor.propellant_mass_kg.is_some()
-        {
-            effects.push(Effect { propellant_mass: u, ..Effect::of("propellant mass") });
-        }
-        if let Some(tail) = self.curve.tail {
-            effects.push(Effect {
-                total_impulse: tail.impulse_u,
-                extrapolated_impulse: tail.impulse_u,
-                burn_impulse: if self.burn.end_extrapolated { tail.impulse_u } else { 0.0 },
-                ..Effect::of("tail beyond the record")
-            });
-        }
-        (effects, known)
-    }
-
-    /// Errors of the force scale: each independent direction of each channel's calibration, and the force ratio.
-    fn scale(&self) -> (Vec<Effect>, bool) {
-        use crate::calibration::ScaleSource;
-        let record = self.record;
-        let mut effects = Vec::new();
-        let mut known = true;
-        let peak_index = self.bt.partition_point(|t| *t < self.curve.peak.time_s).min(self.bt.len() - 1);
-        for channel in &record.channels {
-            let Some(errors) = &channel.calibration.errors else {
-                known = false;
-                continue;
-            };
-            let force = &channel.force_n[self.zero.burst.clone()];
-            let rest = self.rest_of(channel);
-            for direction in errors {
-                let scale = record.sign / record.force_ratio;
-                let at_rest = channel.calibration.force_error_n(direction, rest);
-                let change: Vec<f64> = force
-                    .iter()
-                    .map(|f| scale * (channel.calibration.force_error_n(direction, *f) - at_rest))
-                    .collect();
-                let mass_share = match (&self.zero.shift_mass_kg, record.inputs.run.motor.propellant_mass_kg) {
-                    (Some((kg, _)), None) => {
-                        let span = force[peak_index] - rest;
-                        let relative =
-                            if span != 0.0 { change[peak_index] * record.force_ratio / span.abs() } else { 0.0 };
-                        kg * relative
-                    }
-                    _ => 0.0,
-                };
-                effects.push(Effect {
-                    total_impulse: integral::trapezoid(self.bt, &change),
-                    burn_impulse: integral::between(self.bt, &change, self.burn.start.time_s, self.burn.end.time_s),
-                    peak_thrust: change[peak_index],
-                    initial_thrust: integral::between(
-                        self.bt,
-                        &change,
-                        self.burn.start.time_s,
-                        self.burn.start.time_s + self.initial_s,
-                    ) / self.initial_s,
-                    propellant_mass: mass_share,
-                    ..Effect::of(match direction.source {
-                        ScaleSource::Fit => "calibration fit",
-                        ScaleSource::Weights => "weights",
-                        ScaleSource::Gravity => "gravity",
-                        ScaleSource::Buoyancy => "air buoyancy",
-                        ScaleSource::Extrapolation => "beyond the heaviest weight",
-                        ScaleSource::Stated => "stated accuracy",
-                    })
-                });
-            }
-        }
-        if let Some(u) = record.inputs.run.stand.force_ratio.and_then(|r| r.standard_uncertainty) {
-            effects.push(self.relative("force ratio", u / record.force_ratio));
-        }
-        (effects, known)
-    }
-
-    fn relative(&self, source: &str, r: f64) -> Effect {
-        Effect {
-            total_impulse: r * self.total_impulse,
-            burn_impulse: r * self.burn_impulse,
-            peak_thrust: r * self.curve.peak.thrust_n,
-            initial_thrust: r * self.initial,
-            ..Effect::of(source)
-        }
-    }
-
-    /// The channel's force at rest before the burn, N as the calibration reads it.
-    fn rest_of(&self, channel: &force::Channel<'_>) -> f64 {
-        let end = self.zero.burst.start;
-        let start = end.saturating_sub(200).max(self.zero.window.start.min(end));
-        let quiet =
-            if end > start { &channel.force_n[start..end] } else { &channel.force_n[self.zero.burst.end - 1..] };
-        if quiet.is_empty() { 0.0 } else { quiet.iter().sum::<f64>() / quiet.len() as f64 }
-    }
-
-    /// Effect of a zero that is off by `course(t)`.
-    fn zero_effect(&self, source: &str, course: impl Fn(f64) -> f64) -> Effect {
-        let change: Vec<f64> = self.bt.iter().map(|t| -course(*t)).collect();
-        let (start, end) = (&self.burn.start, &self.burn.end);
-        let moved = |c: &Crossing| if c.slope > 0.0 { course(c.time_s) / c.slope } else { 0.0 };
-        Effect {
-            total_impulse: integral::trapezoid(self.bt, &change),
-            burn_impulse: integral::between(self.bt, &change, start.time_s, end.time_s),
-            burn_time: -moved(start) - moved(end),
-            action_time: -moved(&self.action.start) - moved(&self.action.end),
-            peak_thrust: -course(self.curve.peak.time_s),
-            initial_thrust: integral::between(self.bt, &change, start.time_s, start.time_s + self.initial_s)
-                / self.initial_s,
-            ..Effect::of(source)
-        }
-    }
-
-    fn zero(&self) -> Vec<Effect> {
-        let baseline = &self.zero.baseline;
-        let mass_per_newton = match (&self.zero.shift_mass_kg, self.record.inputs.run.motor.propellant_mass_kg) {
-            (Some(_), None) => 1.0 / self.record.gravity.value_m_s2,
-            _ => 0.0,
-        };
-        let mut effects = Vec::new();
-        if let Some(before) = &baseline.before {
-            let u = before.level_u;
-            effects.push(Effect {
-                propellant_mass: u * mass_per_newton,
-                ..self.zero_effect("zero before", |t| u * baseline.sensitivity(t).0)
-            });
-        }
-        if let Some(after) = &baseline.after {
-            let u = after.level_u;
-            effects.push(Effect {
-                propellant_mass: -u * mass_per_newton,
-                ..self.zero_effect("zero after", |t| u * baseline.sensitivity(t).1)
-            });
-        }
-        if self.zero.drift_u_n > 0.0 {
-            let u = self.zero.drift_u_n;
-            effects.push(self.zero_effect("course of the zero's drift", |_| u));
-        }
-        effects
-    }
-
-    fn noise(&self) -> Vec<Effect> {
-        let density = zero::noise_density(self.zero, self.record.interval_s());
-        let duration = self.bt[self.bt.len() - 1] - self.bt[0];
-        vec![
-            Effect {
-                total_impulse: (density * duration).sqrt(),
-                burn_impulse: (density * self.burn_time).sqrt(),
-                initial_thrust: (density / self.initial_s).sqrt(),
-                ..Effect::of("noise")
-            },
-            Effect { peak_thrust: self.curve.peak.noise_u_n, ..Effect::of("noise at the peak") },
-            Effect { total_impulse: self.sampling_u(), burn_impulse: self.sampling_u(), ..Effect::of("sampling") },
-        ]
-    }
-
-    /// What the straight lines between samples may miss: second differences beyond noise, each over its interval, and gaps.
-    fn sampling_u(&self) -> f64 {
-        let noise = 6.0 * self.curve.quiet_sd_n.powi(2);
-        let mut sum = 0.0;
-        // An averaging converter misses nothing between its stamps.
-        if !self.record.averaged_cells() {
-            for (t, f) in self.bt.windows(3).zip(self.bf.windows(3)) {
-                let d = f[0] - 2.0 * f[1] + f[2];
-                let excess = (d * d - 4.0 * noise).max(0.0);
-                // A jump at an unknown place in one interval: jump · dt / √12, and it shows in two second differences.
-                sum += excess * ((t[2] - t[0]) / 2.0).powi(2) / 24.0;
-            }
-        }
-        for gap in &self.record.inputs.log.gaps {
-            let (a, b) = (gap.start_s, gap.end_s);
-            if b > self.bt[0] && a < self.bt[self.bt.len() - 1] {
-                let ends = [curve::at(self.bt, self.bf, a), curve::at(self.bt, self.bf, b)];
-                // Between the two ends the thrust is not known: a jump anywhere in the gap, and 2 % of thrust besides.
-                let u = (ends[1] - ends[0]).abs() / 12f64.sqrt() + 0.02 * ends[0].max(ends[1]).max(0.0);
-                sum += (u * (b - a)).powi(2);
-            }
-        }
-        sum.sqrt()
-    }
-
-    fn ends(&self, delay_u: Option<f64>) -> Vec<Effect> {
-        let curve = self.curve;
-        let instant = |c: &Crossing, level: f64| {
-            if c.slope.is_infinite() {
-                return 0.0;
-            }
-            // The smoothing allows a bias of about the width of its own interval before it takes a shorter window.
-            let error =
-                SMOOTHING_BIAS * curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
-            let threshold = level * curve.peak.noise_u_n;
-            let noise = if c.slope > 0.0 { error.hypot(threshold) / c.slope } else { 0.0 };
-            // The shape of a rise that passes within a few samples is known to a part of one interval only.
-            let dt = curve.conditioned.interval_s;
-            let steep = (c.slope * dt / (STEEP_SHARE * curve.peak.thrust_n)).min(1.0);
-            noise.hypot(c.sampling_half_width_s / 3f64.sqrt()).hypot(EDGE_SHARE * dt * steep)
-        };
-        let (start_u, end_u) = (instant(&self.burn.start, BURN_LEVEL), instant(&self.burn.end, BURN_LEVEL));
-        let (up_u, down_u) = (instant(&self.action.start, ACTION_LEVEL), instant(&self.action.end, ACTION_LEVEL));
-        let level_n = BURN_LEVEL * curve.peak.thrust_n;
-        let source = "interval ends";
-        vec![
-            Effect {
-                burn_time: -start_u,
-                burn_impulse: -level_n * start_u,
-                action_time: -up_u,
-                rise_time: -up_u,
-                ignition_delay: delay_u.map_or(0.0, |u| u.hypot(start_u)),
-                ..Effect::of(source)
-            },
-            Effect { burn_time: end_u, burn_impulse: level_n * end_u, action_time: down_u, ..Effect::of(source) },
-            Effect { rise_time: self.rise_time.map_or(0.0, |_| self.risen_u()), ..Effect::of(source) },
-        ]
-    }
-
-    /// Uncertainty of the instant at which 90 % of peak is reached, s.
-    fn risen_u(&self) -> f64 {
-        let curve = self.curve;
-        crossings::first_up(&curve.time_s, &curve.thrust_n, RISEN_LEVEL * curve.peak.thrust_n).map_or(0.0, |c| {
-            let error = curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
-            (error.hypot(RISEN_LEVEL * curve.peak.noise_u_n) / c.slope.max(f64::MIN_POSITIVE))
-                .hypot(curve.conditioned.interval_s / 12f64.sqrt())
-        })
-    }
-
-    /// The clock scales times and impulse together.
-    fn clock(&self) -> Effect {
-        let stated = self.record.inputs.run.log.clock_tolerance;
-        let r = match stated {
-            Some(tolerance) => tolerance.value / 3f64.sqrt(),
-            None => CRYSTAL_CLOCK / 3f64.sqrt(),
-        };
-        Effect {
-            total_impulse: r * self.total_impulse,
-            burn_impulse: r * self.burn_impulse,
-            burn_time: r * self.burn_time,
-            action_time: r * self.action_time,
-            rise_time: r * self.rise_time.unwrap_or(0.0),
-            ignition_delay: r * self.delay.unwrap_or(0.0),
-            ..Effect::of("clock")
-        }
-    }
 }
