@@ -208,7 +208,7 @@ fn all_hold(failures: &[String]) {
 
 /// Impulse and burn time are held together for all rates from 80 Hz up, point samples and averages alike; the peak by rate.
 /// At 80 Hz alone the noise of these firings leaves the impulse uncertain by 0.035 % (standard uncertainty), so a median of
-/// 0.02 % says something of all rates together only.
+/// 0.02 % says something of all rates together only. Other seeds go beyond these limits now and then (DEVELOPERS.md, known limits).
 #[test]
 fn plain_firings_come_out_true() {
     let mut cases = run_kind(Kind::Plain, 60);
@@ -246,8 +246,8 @@ fn half_a_second_before_and_a_cut_tail_leave_the_impulse_standing() {
     kind_holds(Kind::Truncated, 20, &rows(each(0.005), each(0.005), None));
 }
 
-/// The swing makes the naive peak 8 to 90 % high. Taking it out ends the band at some 1.5 ms, which rounds a sharp spike right
-/// after a rise of a few milliseconds by up to 1.2 %; half of the firings come within 0.1 %.
+/// The swing makes the naive peak 8 to 90 % high. What is wanted is 0.5 % each; the limit of 1.5 % keeps what is reached on these
+/// seeds from getting worse, and other seeds go beyond it (DEVELOPERS.md, known limits).
 #[test]
 fn a_ringing_stand_is_seen_through() {
     kind_holds(Kind::Ringing, 20, &rows(each(0.0015), both(0.015, 0.001), Some(each(0.003))));
