@@ -3,7 +3,8 @@
 
 use crate::condition::adaptive::{self, Smoothed};
 use crate::condition::response::{self, Response};
-use crate::condition::{lowpass, peak, spectrum};
+use crate::condition::scatter::Scatter;
+use crate::condition::{corner, lowpass, peak, spectrum};
 use crate::run::Lowpass;
 /// Thrust conditioned over one burst and its surroundings.
 #[derive(Debug, Clone, PartialEq)]
@@ -37,6 +38,13 @@ const CUTOFF_MARGIN: f64 = 2.5;
 const HIGHEST_CUTOFF: f64 = 0.35;
 /// Below this number of samples the noise during the burst cannot be told from its shape.
 const LEAST_FOR_BURN_NOISE: usize = 200;
+
+/// What the choice of the stretch adds to the error of a fit around the peak, as a factor.
+const CHOICE_OF_STRETCH: f64 = std::f64::consts::SQRT_2;
+/// A corner is believed where its error is at most this many times that of a smooth piece.
+const LARGEST_CORNER_ERROR: f64 = 3.0;
+/// The burst counts as level, to see how it scatters, from its first to its last crossing of this share of the peak.
+const LEVEL_PART: f64 = 0.3;
 
 fn median(mut values: Vec<f64>) -> f64 {
     if values.is_empty() {
@@ -210,9 +218,19 @@ impl Conditioned {
         if !self.smoothed || self.sample_noise_n[at] <= 0.0 {
             return Some(plain);
         }
-        let fitted = peak::fit(self.samples_n.get(range.clone())?, at - range.start, self.sample_noise_n[at])?;
+        let scatter = self.scatter(&range, at);
+        let fitted = peak::fit(self.samples_n.get(range.clone())?, at - range.start, &scatter)?;
+        let sharp = corner::find(&self.samples_n, at, &scatter)
+            .filter(|c| c.standard_error < LARGEST_CORNER_ERROR * fitted.standard_error);
+        if let Some(corner) = sharp {
+            return Some(Peak {
+                thrust_n: corner.value,
+                noise_u_n: corner.standard_error * CHOICE_OF_STRETCH,
+                ..plain
+            });
+        }
         // What the choice of the stretch adds is of the order of the fit's own error.
-        let noise_u_n = fitted.standard_error * 2f64.sqrt();
+        let noise_u_n = fitted.standard_error * CHOICE_OF_STRETCH;
         // Between samples a bent curve may stand higher by an eighth of its second difference.
         let bent = match (at.checked_sub(1).and_then(|k| self.thrust_n.get(k)), self.thrust_n.get(at + 1)) {
             (Some(before), Some(after)) => (2.0 * self.thrust_n[at] - before - after).abs() / 8.0,
@@ -222,6 +240,15 @@ impl Conditioned {
         let hidden = peak::between_samples(&self.samples_n, at, self.sample_noise_n[at]);
         let (excess, excess_u) = hidden.unwrap_or((0.0, 0.0));
         Some(Peak { thrust_n: fitted.value + excess, noise_u_n: noise_u_n.hypot(excess_u), ..plain })
+    }
+
+    /// How the samples scatter in the quiet record and in the level part of the burst.
+    fn scatter(&self, burst: &std::ops::Range<usize>, at: usize) -> Scatter {
+        let level = LEVEL_PART * self.thrust_n[at];
+        let up = burst.start + self.thrust_n[burst.clone()].iter().take_while(|f| **f < level).count();
+        let down = burst.end - self.thrust_n[burst.clone()].iter().rev().take_while(|f| **f < level).count();
+        let quiet = [0..burst.start, burst.end..self.samples_n.len()];
+        Scatter::measure(&self.samples_n, &quiet, up..down.max(up), self.sample_noise_n[at])
     }
 
     /// Makes the curve agree with its corrected peak: noise that stands above the peak is cut to it, and the highest

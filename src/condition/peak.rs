@@ -4,6 +4,7 @@
 //! The highest sample of a noisy curve is too high, and that of a smoothed one too low; a fit over the longest stretch that
 //! it explains has neither fault, and with little noise it shrinks to the sample itself.
 
+use crate::condition::scatter::Scatter;
 use nalgebra::{Matrix4, Vector4};
 
 /// The peak by the fit.
@@ -89,9 +90,10 @@ fn powers(left: usize, right: usize) -> [f64; 7] {
     s
 }
 
-/// Fits around sample `top` of evenly spaced `data` with noise `sigma` a sample.
-pub fn fit(data: &[f64], top: usize, sigma: f64) -> Option<PeakFit> {
+/// Fits around sample `top` of evenly spaced `data` whose noise scatters as `scatter` tells.
+pub fn fit(data: &[f64], top: usize, scatter: &Scatter) -> Option<PeakFit> {
     let origin = *data.get(top)?;
+    let sigma = scatter.sample_sd();
     let plain = PeakFit { position: top as f64, value: origin, standard_error: sigma, samples: 1 };
     if sigma <= 0.0 {
         return Some(plain);
@@ -115,7 +117,7 @@ pub fn fit(data: &[f64], top: usize, sigma: f64) -> Option<PeakFit> {
                 if n < order + 4 {
                     break;
                 }
-                if let Some(candidate) = piece(&left_sums, &right_sums, left, right, order, sigma) {
+                if let Some(candidate) = piece(&left_sums, &right_sums, left, right, order, scatter) {
                     accepted = true;
                     candidates.push(PeakFit {
                         position: top as f64 + candidate.position,
@@ -168,7 +170,7 @@ pub fn between_samples(data: &[f64], top: usize, sigma: f64) -> Option<(f64, f64
     (excess > 0.0).then_some((TOWARDS_CROSSING * excess, excess / 12f64.sqrt()))
 }
 
-fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, sigma: f64) -> Option<PeakFit> {
+fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, scatter: &Scatter) -> Option<PeakFit> {
     let (l, r) = (ls.0.get(left)?, rs.0.get(right)?);
     let n = (left + right + 1) as f64;
     let p = powers(left, right);
@@ -189,12 +191,13 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, sigma: f
     };
     let (inverse, c, rss) = solve(order)?;
     let dof = n - 1.0 - order as f64;
-    if rss > sigma * sigma * (dof + VARIANCE_LIMIT * (2.0 * dof).sqrt()) {
+    let sigma = scatter.sample_sd();
+    if rss > sigma * sigma * (dof + VARIANCE_LIMIT * (2.0 * dof * scatter.dependence()).sqrt()) {
         return None;
     }
     // The next power must have nothing to add that noise could not.
     let (_, _, next) = solve(order + 1)?;
-    if rss - next > NEXT_POWER_LIMIT * NEXT_POWER_LIMIT * sigma * sigma {
+    if rss - next > NEXT_POWER_LIMIT * NEXT_POWER_LIMIT * scatter.variance_over(n / (order as f64 + 2.0)) {
         return None;
     }
     let value = |x: f64| c[0] + c[1] * x / h + c[2] * (x / h).powi(2);
@@ -210,7 +213,8 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, sigma: f
                 (far[k] - near[k]) * if k == 1 { sign } else { 1.0 }
             };
             let fitted = c[0] * q(0) + c[1] * q(1) / h + c[2] * q(2) / (h * h);
-            if (measured - fitted).abs() > PART_LIMIT * sigma * ((to - from) as f64).sqrt() {
+            let part = (to - from) as f64;
+            if (measured - fitted).abs() > PART_LIMIT * (part * scatter.variance_over(part)).sqrt() {
                 return None;
             }
         }
@@ -228,7 +232,8 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, sigma: f
     }
     let g =
         Vector4::new(1.0, if order > 0 { at / h } else { 0.0 }, if order > 1 { (at / h).powi(2) } else { 0.0 }, 0.0);
-    let standard_error = sigma * (g.transpose() * inverse * g)[0].max(0.0).sqrt();
+    let standard_error =
+        scatter.variance_over(n / (order as f64 + 1.0)).sqrt() * (g.transpose() * inverse * g)[0].max(0.0).sqrt();
     Some(PeakFit { position: at, value: value(at), standard_error, samples: left + right + 1 })
 }
 
@@ -250,7 +255,7 @@ mod tests {
                         c + sigma * z
                     })
                     .collect();
-                fit(&data, top, sigma).expect("fit").value / truth - 1.0
+                fit(&data, top, &Scatter::white(sigma)).expect("fit").value / truth - 1.0
             })
             .collect();
         (all.iter().sum::<f64>() / 40.0, all.iter().fold(0.0, |w, e| e.abs().max(w)))
@@ -291,6 +296,6 @@ mod tests {
 
     #[test]
     fn without_noise_the_sample_itself() {
-        assert_eq!(fit(&[1.0, 5.0, 2.0], 1, 0.0).expect("fit").value, 5.0);
+        assert_eq!(fit(&[1.0, 5.0, 2.0], 1, &Scatter::white(0.0)).expect("fit").value, 5.0);
     }
 }
