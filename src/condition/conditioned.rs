@@ -41,8 +41,13 @@ const LEAST_FOR_BURN_NOISE: usize = 200;
 
 /// What the choice of the stretch adds to the error of a fit around the peak, as a factor.
 const CHOICE_OF_STRETCH: f64 = std::f64::consts::SQRT_2;
-/// A corner is believed where its error is at most this many times that of a smooth piece.
-const LARGEST_CORNER_ERROR: f64 = 3.0;
+/// A corner is believed where its error is at most this share of it, and where it stands above the smooth piece by so many standard
+/// errors of their difference.
+const LARGEST_CORNER_ERROR: f64 = 0.03;
+const CORNER_EVIDENCE: f64 = 2.0;
+/// Parts of the burst whose tops are looked at, where they reach this share of the highest.
+const PARTS: usize = 16;
+const NEARLY_HIGHEST: f64 = 0.97;
 /// The burst counts as level, to see how it scatters, from its first to its last crossing of this share of the peak.
 const LEVEL_PART: f64 = 0.3;
 
@@ -220,17 +225,29 @@ impl Conditioned {
         }
         let scatter = self.scatter(&range, at);
         let fitted = peak::fit(self.samples_n.get(range.clone())?, at - range.start, &scatter)?;
-        let sharp = corner::find(&self.samples_n, at, &scatter)
-            .filter(|c| c.standard_error < LARGEST_CORNER_ERROR * fitted.standard_error);
-        if let Some(corner) = sharp {
+        let sharp = self
+            .tops(&range, at)
+            .into_iter()
+            .filter_map(|top| corner::find(&self.samples_n, top, &scatter).map(|c| (top, c)))
+            .filter(|(_, c)| {
+                // Either it is known better than the smooth piece, or it stands plainly above it.
+                let error = c.standard_error.hypot(fitted.standard_error);
+                let above = c.value - fitted.value;
+                c.standard_error < LARGEST_CORNER_ERROR * c.value
+                    && (above > CORNER_EVIDENCE * error
+                        || (c.standard_error < fitted.standard_error && above > -CORNER_EVIDENCE * error))
+            })
+            .max_by(|a, b| a.1.value.total_cmp(&b.1.value));
+        if let Some((top, corner)) = sharp {
             return Some(Peak {
+                time_s: self.time_s[top],
                 thrust_n: corner.value,
-                noise_u_n: corner.standard_error * CHOICE_OF_STRETCH,
+                noise_u_n: (corner.standard_error * CHOICE_OF_STRETCH).hypot(corner.rounding_u),
                 ..plain
             });
         }
         // What the choice of the stretch adds is of the order of the fit's own error.
-        let noise_u_n = fitted.standard_error * CHOICE_OF_STRETCH;
+        let noise_u_n = (fitted.standard_error * CHOICE_OF_STRETCH).hypot(fitted.choice_u);
         // Between samples a bent curve may stand higher by an eighth of its second difference.
         let bent = match (at.checked_sub(1).and_then(|k| self.thrust_n.get(k)), self.thrust_n.get(at + 1)) {
             (Some(before), Some(after)) => (2.0 * self.thrust_n[at] - before - after).abs() / 8.0,
@@ -240,6 +257,22 @@ impl Conditioned {
         let hidden = peak::between_samples(&self.samples_n, at, self.sample_noise_n[at]);
         let (excess, excess_u) = hidden.unwrap_or((0.0, 0.0));
         Some(Peak { thrust_n: fitted.value + excess, noise_u_n: noise_u_n.hypot(excess_u), ..plain })
+    }
+
+    /// The top, and the tops of other parts of the burst that are nearly as high: a spike may stand beside a long hump.
+    fn tops(&self, burst: &std::ops::Range<usize>, at: usize) -> Vec<usize> {
+        let part = (burst.len() / PARTS).max(1);
+        let mut tops = vec![at];
+        for from in burst.clone().step_by(part) {
+            let to = (from + part).min(burst.end);
+            let top = (from..to).max_by(|a, b| self.thrust_n[*a].total_cmp(&self.thrust_n[*b])).unwrap_or(from);
+            // A top at the seam of two parts is no top.
+            let inside = top > from && top + 1 < to;
+            if inside && top.abs_diff(at) > part / 2 && self.thrust_n[top] > NEARLY_HIGHEST * self.thrust_n[at] {
+                tops.push(top);
+            }
+        }
+        tops
     }
 
     /// How the samples scatter in the quiet record and in the level part of the burst.

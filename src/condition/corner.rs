@@ -13,21 +13,26 @@ pub struct Corner {
     /// In samples from the first of the data.
     pub position: f64,
     pub value: f64,
-    /// From noise, and from how far a rounded corner may stay below.
+    /// From noise.
     pub standard_error: f64,
+    /// How far a rounded corner may stay below, as a standard uncertainty.
+    pub rounding_u: f64,
 }
 
 /// Gaps up to so many samples from the top are looked at: noise may put the highest sample beside the corner, by much in a fast log.
 const FARTHEST_GAP: usize = 1000;
 /// Longest stretch on a side, samples.
 const LONGEST: usize = 3000;
+/// One side of a corner (the ignition's rise, the drop after burn-out) is so many times steeper than the other: in noise, two straight
+/// flanks of a smooth hump meet above it too.
+const STEEPER: f64 = 3.0;
 /// A kink counts from so many standard errors of the change of slope on.
 const KINK_EVIDENCE: f64 = 6.0;
 /// And where one smooth cubic over both stretches leaves so many variances of noise more than the two pieces do: lines meet at a kink
 /// on any hump that is short against the noise.
 const SMOOTH_EVIDENCE: f64 = 16.0;
 /// The meeting point may lie so far from the middle of its gap: in samples, or in its own standard errors.
-const FROM_THE_GAP: f64 = 0.75;
+const FROM_THE_GAP: f64 = 0.55;
 const FROM_THE_GAP_BY_NOISE: f64 = 1.5;
 /// A stretch is refused when its residuals, those of its halves or quarters, or the next power exceed noise by so many standard deviations.
 const VARIANCE_LIMIT: f64 = 2.0;
@@ -54,7 +59,7 @@ pub fn find(data: &[f64], top: usize, scatter: &Scatter) -> Option<Corner> {
     if scatter.sample_sd() <= 0.0 || data.get(top).is_none() {
         return None;
     }
-    let mut found: Vec<Corner> = Vec::new();
+    let mut best: Option<((bool, f64), Corner)> = None;
     let mut offsets = vec![0_isize];
     let mut step = 1.0_f64;
     while step < FARTHEST_GAP as f64 {
@@ -71,6 +76,9 @@ pub fn find(data: &[f64], top: usize, scatter: &Scatter) -> Option<Corner> {
             continue;
         }
         let (climb, fall) = (-left.slope, -right.slope);
+        if climb.max(fall) < STEEPER * climb.min(fall) {
+            continue;
+        }
         let kink = (climb + fall) / (left.slope_variance + right.slope_variance).sqrt();
         // From the middle of the gap, to the right.
         let x = (right.value - left.value) / (climb + fall);
@@ -91,14 +99,15 @@ pub fn find(data: &[f64], top: usize, scatter: &Scatter) -> Option<Corner> {
         // A rounded corner stays between the pieces' values at the samples beside the gap and the meeting point.
         let beside = (left.value - 0.5 * climb).max(right.value - 0.5 * fall);
         let rounding = (value - beside).max(0.0) / 12f64.sqrt();
-        found.push(Corner {
-            position: gap as f64 + 0.5 + x,
-            value,
-            standard_error: (variance + rounding * rounding).sqrt(),
-        });
+        let corner =
+            Corner { position: gap as f64 + 0.5 + x, value, standard_error: variance.sqrt(), rounding_u: rounding };
+        // The true gap is one whose own pieces meet in it, and explain most that one smooth piece does not.
+        let rank = (x.abs() <= 0.5, excess);
+        if best.is_none_or(|(most, _)| rank > most) {
+            best = Some((rank, corner));
+        }
     }
-    found.sort_unstable_by(|a, b| a.value.total_cmp(&b.value));
-    found.get(found.len() / 2).copied()
+    best.map(|(_, corner)| corner)
 }
 
 /// Fits the samples that lie 0.5, 1.5, … samples away from the gap.
@@ -242,7 +251,7 @@ mod tests {
             let data = noisy(clean, 0.3, seed);
             let corner = find(&data, top(&data), &Scatter::white(0.3)).expect("a corner");
             errors.push(corner.value - 100.0);
-            within += usize::from((corner.value - 100.0).abs() < 1.96 * corner.standard_error);
+            within += usize::from((corner.value - 100.0).abs() < 1.96 * corner.standard_error.hypot(corner.rounding_u));
         }
         let mean = errors.iter().sum::<f64>() / 100.0;
         // The highest sample is 0.5 to 3 below the corner before noise.

@@ -14,6 +14,8 @@ pub struct PeakFit {
     pub position: f64,
     pub value: f64,
     pub standard_error: f64,
+    /// Standard deviation of the values among the stretches that do nearly as well: what the choice among them leaves open.
+    pub choice_u: f64,
     /// Samples used.
     pub samples: usize,
 }
@@ -94,7 +96,7 @@ fn powers(left: usize, right: usize) -> [f64; 7] {
 pub fn fit(data: &[f64], top: usize, scatter: &Scatter) -> Option<PeakFit> {
     let origin = *data.get(top)?;
     let sigma = scatter.sample_sd();
-    let plain = PeakFit { position: top as f64, value: origin, standard_error: sigma, samples: 1 };
+    let plain = PeakFit { position: top as f64, value: origin, standard_error: sigma, choice_u: 0.0, samples: 1 };
     if sigma <= 0.0 {
         return Some(plain);
     }
@@ -139,7 +141,11 @@ pub fn fit(data: &[f64], top: usize, scatter: &Scatter) -> Option<PeakFit> {
     let best = candidates.iter().map(|c| c.standard_error).fold(f64::INFINITY, f64::min);
     candidates.retain(|c| c.standard_error <= NEARLY_AS_WELL * best);
     candidates.sort_unstable_by(|a, b| a.value.total_cmp(&b.value));
-    candidates.get(candidates.len() / 2).copied()
+    let chosen = candidates.get(candidates.len() / 2)?;
+    let n = candidates.len() as f64;
+    let mean = candidates.iter().map(|c| c.value).sum::<f64>() / n;
+    let choice_u = (candidates.iter().map(|c| (c.value - mean).powi(2)).sum::<f64>() / n).sqrt();
+    Some(PeakFit { choice_u, ..*chosen })
 }
 
 /// What a peak between two samples may add to the highest sample `top`, and the standard uncertainty of that.
@@ -234,7 +240,7 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, scatter:
         Vector4::new(1.0, if order > 0 { at / h } else { 0.0 }, if order > 1 { (at / h).powi(2) } else { 0.0 }, 0.0);
     let standard_error =
         scatter.variance_over(n / (order as f64 + 1.0)).sqrt() * (g.transpose() * inverse * g)[0].max(0.0).sqrt();
-    Some(PeakFit { position: at, value: value(at), standard_error, samples: left + right + 1 })
+    Some(PeakFit { position: at, value: value(at), standard_error, choice_u: 0.0, samples: left + right + 1 })
 }
 
 #[cfg(test)]

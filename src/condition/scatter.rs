@@ -141,7 +141,9 @@ mod tests {
         let data: Vec<f64> = noise(20_000, 2)
             .iter()
             .enumerate()
-            .map(|(i, z)| 0.5 * z + if i < 8000 { 0.0 } else { 100.0 + 2.0 * (i as f64 * std::f64::consts::TAU / 67.3).sin() })
+            .map(|(i, z)| {
+                0.5 * z + if i < 8000 { 0.0 } else { 100.0 + 2.0 * (i as f64 * std::f64::consts::TAU / 67.3).sin() }
+            })
             .collect();
         let s = Scatter::measure(&data, &[0..8000], 8001..20_000, 0.5);
         assert!((s.variance_over(1.0) - 0.25).abs() < 0.05, "{s:?}");
