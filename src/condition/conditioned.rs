@@ -44,7 +44,7 @@ const CHOICE_OF_STRETCH: f64 = std::f64::consts::SQRT_2;
 /// A corner is believed where its error is at most this share of it, and where it stands above the smooth piece by so many standard
 /// errors of their difference.
 const LARGEST_CORNER_ERROR: f64 = 0.03;
-const CORNER_EVIDENCE: f64 = 2.0;
+const CORNER_EVIDENCE: f64 = 2.5;
 /// Parts of the burst whose tops are looked at, where they reach this share of the highest.
 const PARTS: usize = 16;
 const NEARLY_HIGHEST: f64 = 0.97;
@@ -225,19 +225,23 @@ impl Conditioned {
         }
         let scatter = self.scatter(&range, at);
         let fitted = peak::fit(self.samples_n.get(range.clone())?, at - range.start, &scatter)?;
-        let sharp = self
+        let corners: Vec<(usize, corner::Corner)> = self
             .tops(&range, at)
             .into_iter()
             .filter_map(|top| corner::find(&self.samples_n, top, &scatter).map(|c| (top, c)))
+            .filter(|(_, c)| c.standard_error < LARGEST_CORNER_ERROR * c.value)
+            .collect();
+        let above = |c: &corner::Corner| c.value - fitted.value;
+        let error = |c: &corner::Corner| c.standard_error.hypot(fitted.standard_error);
+        // Either it is known better than the smooth piece, or it stands plainly above it.
+        let sharp = corners
+            .iter()
             .filter(|(_, c)| {
-                // Either it is known better than the smooth piece, or it stands plainly above it.
-                let error = c.standard_error.hypot(fitted.standard_error);
-                let above = c.value - fitted.value;
-                c.standard_error < LARGEST_CORNER_ERROR * c.value
-                    && (above > CORNER_EVIDENCE * error
-                        || (c.standard_error < fitted.standard_error && above > -CORNER_EVIDENCE * error))
+                above(c) > CORNER_EVIDENCE * error(c)
+                    || (c.standard_error < fitted.standard_error && above(c) > -CORNER_EVIDENCE * error(c))
             })
-            .max_by(|a, b| a.1.value.total_cmp(&b.1.value));
+            .max_by(|a, b| a.1.value.total_cmp(&b.1.value))
+            .copied();
         if let Some((top, corner)) = sharp {
             return Some(Peak {
                 time_s: self.time_s[top],
@@ -248,6 +252,9 @@ impl Conditioned {
         }
         // What the choice of the stretch adds is of the order of the fit's own error.
         let noise_u_n = (fitted.standard_error * CHOICE_OF_STRETCH).hypot(fitted.choice_u);
+        // A corner that may be there without standing out plainly: anywhere between the smooth piece and a little above it.
+        let hidden_corner = corners.iter().map(|(_, c)| above(c) + error(c)).fold(0.0, f64::max) / 12f64.sqrt();
+        let noise_u_n = noise_u_n.hypot(hidden_corner);
         // Between samples a bent curve may stand higher by an eighth of its second difference.
         let bent = match (at.checked_sub(1).and_then(|k| self.thrust_n.get(k)), self.thrust_n.get(at + 1)) {
             (Some(before), Some(after)) => (2.0 * self.thrust_n[at] - before - after).abs() / 8.0,

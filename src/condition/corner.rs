@@ -98,7 +98,11 @@ pub fn find(data: &[f64], top: usize, scatter: &Scatter) -> Option<Corner> {
         let variance = weights[0].powi(2) * at(&left, -x) + weights[1].powi(2) * at(&right, x);
         // A rounded corner stays between the pieces' values at the samples beside the gap and the meeting point.
         let beside = (left.value - 0.5 * climb).max(right.value - 0.5 * fall);
-        let rounding = (value - beside).max(0.0) / 12f64.sqrt();
+        let reach = (value - beside).max(0.0);
+        let rounding = reach / 12f64.sqrt();
+        // A steep side of two samples is a line by assumption only: the corner is then taken midway.
+        let steep = if climb > fall { &left } else { &right };
+        let value = if steep.samples < 3 { value - 0.5 * reach } else { value };
         let corner =
             Corner { position: gap as f64 + 0.5 + x, value, standard_error: variance.sqrt(), rounding_u: rounding };
         // The true gap is one whose own pieces meet in it, and explain most that one smooth piece does not.
