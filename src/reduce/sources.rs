@@ -217,7 +217,7 @@ impl Work<'_> {
 
     fn ends(&self, delay_u: Option<f64>) -> Vec<Effect> {
         let curve = self.curve;
-        let instant = |c: &Crossing, level: f64| {
+        let instant = |c: &Crossing, level: f64, rising: bool| {
             if c.slope.is_infinite() {
                 return 0.0;
             }
@@ -225,14 +225,16 @@ impl Work<'_> {
             let error =
                 SMOOTHING_BIAS * curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
             let threshold = level * curve.peak.noise_u_n;
-            let noise = if c.slope > 0.0 { error.hypot(threshold) / c.slope } else { 0.0 };
+            let noise = self.time_for(c, level * curve.peak.thrust_n, error.hypot(threshold), rising);
             // The shape of a rise that passes within a few samples is known to a part of one interval only.
             let dt = curve.conditioned.interval_s;
             let steep = (c.slope * dt / (STEEP_SHARE * curve.peak.thrust_n)).min(1.0);
             noise.hypot(c.sampling_half_width_s / 3f64.sqrt()).hypot(EDGE_SHARE * dt * steep)
         };
-        let (start_u, end_u) = (instant(&self.burn.start, BURN_LEVEL), instant(&self.burn.end, BURN_LEVEL));
-        let (up_u, down_u) = (instant(&self.action.start, ACTION_LEVEL), instant(&self.action.end, ACTION_LEVEL));
+        let (start_u, end_u) =
+            (instant(&self.burn.start, BURN_LEVEL, true), instant(&self.burn.end, BURN_LEVEL, false));
+        let (up_u, down_u) =
+            (instant(&self.action.start, ACTION_LEVEL, true), instant(&self.action.end, ACTION_LEVEL, false));
         let level_n = BURN_LEVEL * curve.peak.thrust_n;
         let source = "interval ends";
         vec![
@@ -247,6 +249,28 @@ impl Work<'_> {
             Effect { burn_time: end_u, burn_impulse: level_n * end_u, action_time: down_u, ..Effect::of(source) },
             Effect { rise_time: self.rise_time.map_or(0.0, |_| self.risen_u()), ..Effect::of(source) },
         ]
+    }
+
+    /// Half the time that the curve takes through `level_n` ± `error_n`: in noise it climbs down in steps, and the slope of one step
+    /// says little of how far the crossing may lie off. Not less than the slope at the crossing gives.
+    fn time_for(&self, c: &Crossing, level_n: f64, error_n: f64, rising: bool) -> f64 {
+        let (t, f) = (&self.curve.time_s, &self.curve.thrust_n);
+        let from = t.partition_point(|x| *x < self.curve.burst_s[0] - 0.25).saturating_sub(1);
+        let to = (t.partition_point(|x| *x <= self.curve.burst_s[1]) + 2).min(t.len());
+        let error_n = error_n.min(0.9 * level_n);
+        let passing = |level: f64| {
+            let found = if rising {
+                crossings::first_up(&t[from..to], &f[from..to], level)
+            } else {
+                crossings::last_down(&t[from..to], &f[from..to], level)
+            };
+            found.map(|c| c.time_s)
+        };
+        let local = if c.slope > 0.0 { error_n / c.slope } else { 0.0 };
+        match (passing(level_n - error_n), passing(level_n + error_n)) {
+            (Some(low), Some(high)) => (0.5 * (low - high).abs()).max(local),
+            _ => local,
+        }
     }
 
     /// Uncertainty of the instant at which 90 % of peak is reached, s.
