@@ -28,6 +28,8 @@ pub struct Conditioned {
     /// On the grid before any filter, with its noise, for the fit of the peak.
     samples_n: Vec<f64>,
     sample_noise_n: Vec<f64>,
+    /// Noise of single samples in the quiet record, before any filter, N.
+    quiet_noise_n: f64,
 }
 
 /// The signal must stand this far out of the noise floor (in power) to count.
@@ -147,6 +149,7 @@ pub fn condition(
     let mut noise_n = local_noise(&value, quiet_sd_n);
     let typical = median(noise_n.clone());
     let mut autocorrelation = vec![1.0];
+    let mut quiet_noise_n = quiet_sd_n;
     if let Some(response) = stand {
         let highest = value.iter().copied().fold(f64::MIN_POSITIVE, f64::max);
         let kernel = response::kernel(response, interval_s, typical / highest);
@@ -155,7 +158,8 @@ pub fn condition(
         let power = product(0);
         autocorrelation = (0..kernel.len()).map(|lag| product(lag) / power).collect();
         // Roughness that the second differences showed is the stand's swing in part; the quiet noise is what is amplified.
-        noise_n = vec![quiet_sd_n * power.sqrt(); n];
+        quiet_noise_n = quiet_sd_n * power.sqrt();
+        noise_n = vec![quiet_noise_n; n];
     }
     let cutoff_hz = match wanted {
         Some(Lowpass::Off) => None,
@@ -185,6 +189,7 @@ pub fn condition(
         longest,
         samples_n,
         sample_noise_n,
+        quiet_noise_n,
     };
     if wanted.is_none() {
         let Smoothed { value, standard_error } = conditioned.smooth(&value, 0..n);
@@ -213,8 +218,9 @@ impl Conditioned {
         adaptive::smooth(value, &self.noise_n[range], &self.autocorrelation, self.longest)
     }
 
-    /// Peak between the grid indices of `range`.
-    pub fn peak(&self, range: std::ops::Range<usize>) -> Option<Peak> {
+    /// Peak between the grid indices of `range`. `averaged`: the samples are means over their intervals, which a corner between them
+    /// cannot be told from.
+    pub fn peak(&self, range: std::ops::Range<usize>, averaged: bool) -> Option<Peak> {
         let piece = self.thrust_n.get(range.clone())?;
         let (at, highest_n) = piece.iter().copied().enumerate().max_by(|a, b| a.1.total_cmp(&b.1))?;
         let at = range.start + at;
@@ -225,8 +231,8 @@ impl Conditioned {
         }
         let scatter = self.scatter(&range, at);
         let fitted = peak::fit(self.samples_n.get(range.clone())?, at - range.start, &scatter)?;
-        let corners: Vec<(usize, corner::Corner)> = self
-            .tops(&range, at)
+        let tops = if averaged { Vec::new() } else { self.tops(&range, at) };
+        let corners: Vec<(usize, corner::Corner)> = tops
             .into_iter()
             .filter_map(|top| corner::find(&self.samples_n, top, &scatter).map(|c| (top, c)))
             .filter(|(_, c)| c.standard_error < LARGEST_CORNER_ERROR * c.value)
@@ -288,7 +294,7 @@ impl Conditioned {
         let up = burst.start + self.thrust_n[burst.clone()].iter().take_while(|f| **f < level).count();
         let down = burst.end - self.thrust_n[burst.clone()].iter().rev().take_while(|f| **f < level).count();
         let quiet = [0..burst.start, burst.end..self.samples_n.len()];
-        Scatter::measure(&self.samples_n, &quiet, up..down.max(up), self.sample_noise_n[at])
+        Scatter::measure(&self.samples_n, &quiet, up..down.max(up), self.quiet_noise_n)
     }
 
     /// Makes the curve agree with its corrected peak: noise that stands above the peak is cut to it, and the highest
@@ -331,7 +337,7 @@ mod tests {
         let mut errors = Vec::new();
         for seed in 0..20 {
             let c = condition(&t, &noisy(&clean, 4.0, seed), 0.001, 4.0, 2.0, None, None);
-            let p = c.peak(0..c.time_s.len()).expect("peak");
+            let p = c.peak(0..c.time_s.len(), false).expect("peak");
             errors.push((p.thrust_n - 100.0) / 100.0);
         }
         let mean = errors.iter().sum::<f64>() / 20.0;
@@ -346,7 +352,7 @@ mod tests {
             t.iter().map(|&t| if (1.0..2.0).contains(&t) { 60.0 + 40.0 * (t - 1.0) } else { 0.0 }).collect();
         for seed in 0..10 {
             let c = condition(&t, &noisy(&clean, 0.5, seed), 0.001, 0.5, 1.0, None, None);
-            let p = c.peak(0..c.time_s.len()).expect("peak");
+            let p = c.peak(0..c.time_s.len(), false).expect("peak");
             assert!((p.thrust_n - 99.96).abs() < 0.5, "{p:?}");
         }
     }

@@ -26,6 +26,8 @@ const LONGEST: usize = 20_000;
 const VARIANCE_LIMIT: f64 = 2.5;
 /// Or when the mean residual of a part of the stretch is off by more than this many standard errors.
 const PART_LIMIT: f64 = 2.5;
+/// Shortest part looked at, samples.
+const SHORTEST_PART: usize = 4;
 /// Or when the next power of time, fitted too, would differ from nil by more than this many standard errors.
 const NEXT_POWER_LIMIT: f64 = 1.6;
 
@@ -207,9 +209,12 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, scatter:
         return None;
     }
     let value = |x: f64| c[0] + c[1] * x / h + c[2] * (x / h).powi(2);
-    // Residual sums of the parts to either side, and of their outer halves: a bend or a drop shows there first.
+    // Residual sums of the parts to either side, and of their outer and inner ends: a bend or a drop shows there first (the inner
+    // end is an end of the stretch too where the other side is short).
     for (sums, length, sign) in [(ls, left, -1.0), (rs, right, 1.0)] {
-        for (from, to) in [(0, length), (length / 2, length), (3 * length / 4, length)] {
+        let ends = (1..20).map(|k| length >> k).take_while(|part| *part >= SHORTEST_PART);
+        let parts = ends.flat_map(|part| [(0, part), (length - part, length)]).chain([(0, length)]);
+        for (from, to) in parts {
             if to - from < 2 {
                 continue;
             }

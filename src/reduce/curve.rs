@@ -76,7 +76,7 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
     let first = conditioned.time_s.partition_point(|t| *t < burst_s[0]);
     let last = conditioned.time_s.partition_point(|t| *t <= burst_s[1]);
     let mut peak = conditioned
-        .peak(first..last.max(first + 1).min(conditioned.time_s.len()))
+        .peak(first..last.max(first + 1).min(conditioned.time_s.len()), record.averaged_cells())
         .filter(|p| p.thrust_n > 0.0)
         .ok_or_else(|| Problem::new("the burst has no thrust above its zero").in_file(&record.inputs.run.log.file))?;
     if !record.clipped.is_empty() {
