@@ -205,7 +205,7 @@ fn piece(sums: &[[f64; 12]], length: usize, order: usize, scatter: &Scatter) -> 
                 + c[1] * difference(1) / h
                 + if order > 1 { c[2] * difference(2) / (h * h) } else { 0.0 };
             let part = (to - from) as f64;
-            if (difference(7) - fitted).abs() > PART_LIMIT * (part * scatter.variance_over(part)).sqrt() {
+            if (difference(7) - fitted).abs() > PART_LIMIT * scatter.sum_sd(part) {
                 return None;
             }
         }
@@ -215,7 +215,7 @@ fn piece(sums: &[[f64; 12]], length: usize, order: usize, scatter: &Scatter) -> 
     Some(Side {
         value: c[0],
         slope: c[1] / h,
-        value_variance: covariance[0],
+        value_variance: covariance[0] + scatter.slow_variance(h / (order as f64 + 1.0)),
         covariance: covariance[1],
         slope_variance: covariance[2],
         samples: length,

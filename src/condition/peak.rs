@@ -225,7 +225,7 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, scatter:
             };
             let fitted = c[0] * q(0) + c[1] * q(1) / h + c[2] * q(2) / (h * h);
             let part = (to - from) as f64;
-            if (measured - fitted).abs() > PART_LIMIT * (part * scatter.variance_over(part)).sqrt() {
+            if (measured - fitted).abs() > PART_LIMIT * scatter.sum_sd(part) {
                 return None;
             }
         }
@@ -243,8 +243,10 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, scatter:
     }
     let g =
         Vector4::new(1.0, if order > 0 { at / h } else { 0.0 }, if order > 1 { (at / h).powi(2) } else { 0.0 }, 0.0);
-    let standard_error =
-        scatter.variance_over(n / (order as f64 + 1.0)).sqrt() * (g.transpose() * inverse * g)[0].max(0.0).sqrt();
+    let length = n / (order as f64 + 1.0);
+    let variance =
+        scatter.variance_over(length) * (g.transpose() * inverse * g)[0].max(0.0) + scatter.slow_variance(length);
+    let standard_error = variance.sqrt();
     Some(PeakFit { position: at, value: value(at), standard_error, choice_u: 0.0, samples: left + right + 1 })
 }
 

@@ -13,6 +13,8 @@ pub struct Scatter {
     by_length: Vec<f64>,
     /// Variance of single samples, slow parts included.
     sample_variance: f64,
+    /// Variance of the slow part (a hum, a rough combustion), and the length in samples at which it shows most: about half its period.
+    slow: (f64, f64),
 }
 
 /// Blocks of three that a length must have before its scatter is believed.
@@ -25,35 +27,39 @@ const MEDIAN_ERROR: f64 = 2.34;
 
 impl Scatter {
     pub fn white(sigma: f64) -> Self {
-        Scatter { by_length: vec![sigma * sigma], sample_variance: sigma * sigma }
+        Scatter { by_length: vec![sigma * sigma], sample_variance: sigma * sigma, slow: (0.0, 0.0) }
     }
 
     /// Scatter of evenly spaced `data`: the quiet stretches give it, `busy` (the burn's level part) adds to it where it plainly scatters
     /// more. `sigma`: noise of single samples in the quiet record, the floor.
     pub fn measure(data: &[f64], quiet: &[Range<usize>], busy: Range<usize>, sigma: f64) -> Self {
         let white = sigma * sigma;
-        let (mut by_length, mut wave) = (Vec::new(), 0.0_f64);
+        let (mut by_length, mut slow) = (Vec::new(), (0.0_f64, 0.0_f64));
         for k in 0..20 {
             let length = 1_usize << k;
-            let at_rest = quiet
-                .iter()
-                .filter_map(|r| second_differences(data.get(r.clone())?, length))
-                .max_by_key(|d| d.1)
-                .map(|(variance, _)| variance * length as f64);
+            let at_rest =
+                quiet.iter().filter_map(|r| second_differences(data.get(r.clone())?, length)).max_by_key(|d| d.1);
             let in_burn = data.get(busy.clone()).and_then(|d| second_differences(d, length));
             if at_rest.is_none() && in_burn.is_none() {
                 break;
             }
             // Without quiet record at this length the shorter one speaks for it.
-            let rest = at_rest.or(by_length.last().copied()).unwrap_or(white);
+            let rest =
+                at_rest.map(|(variance, _)| variance * length as f64).or(by_length.last().copied()).unwrap_or(white);
             let mut here = rest;
             if let Some((variance, blocks)) = in_burn {
                 let scaled = variance * length as f64;
                 if scaled > rest.max(white) * (1.0 + EXCESS_EVIDENCE * MEDIAN_ERROR / (blocks as f64).sqrt()) {
-                    // Means over half the period of noise in a narrow band give second differences of 6.5 times its variance, taken
-                    // here for 6 times: the excess at the length where it is largest is the variance of the slow part itself.
-                    wave = wave.max((scaled - rest) / length as f64);
                     here = scaled;
+                }
+            }
+            let certain = at_rest.map_or(0, |d| d.1).max(in_burn.map_or(0, |d| d.1));
+            if k > 0 && here > white * (1.0 + EXCESS_EVIDENCE * MEDIAN_ERROR / (certain as f64).sqrt()) {
+                // Means over half the period of noise in a narrow band give second differences of 6.5 times its variance, taken here for
+                // 6 times: the excess at the length where it is largest is the variance of the slow part itself.
+                let variance = (here - white) / length as f64;
+                if variance > slow.0 {
+                    slow = (variance, length as f64);
                 }
             }
             by_length.push(if k == 0 { here.max(white) } else { here });
@@ -61,8 +67,8 @@ impl Scatter {
         if by_length.is_empty() {
             return Scatter::white(sigma);
         }
-        let sample_variance = by_length[0].max(white) + wave;
-        Scatter { by_length, sample_variance }
+        let sample_variance = by_length[0].max(white) + slow.0;
+        Scatter { by_length, sample_variance, slow }
     }
 
     /// Standard deviation of single samples, slow parts included.
@@ -77,6 +83,16 @@ impl Scatter {
         let k = (x.floor() as usize).min(last.saturating_sub(1));
         let (a, b) = (self.by_length[k], self.by_length[(k + 1).min(last)]);
         a + (b - a) * (x - k as f64)
+    }
+
+    /// What the slow part adds to the variance of a level over `samples` samples: all of it where they are short against it.
+    pub fn slow_variance(&self, samples: f64) -> f64 {
+        if self.slow.1 > 0.0 { self.slow.0 * (1.0 - samples / (2.0 * self.slow.1)).max(0.0) } else { 0.0 }
+    }
+
+    /// Standard deviation of the sum of so many neighbouring samples.
+    pub fn sum_sd(&self, samples: f64) -> f64 {
+        (samples * self.variance_over(samples) + samples * samples * self.slow_variance(samples)).sqrt()
     }
 
     /// How many times more the samples depend on each other than white noise would, 1 or more.
