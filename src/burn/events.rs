@@ -1,5 +1,6 @@
 //! Every stretch of the record that rises out of the quiet, found on short block means.
 
+use crate::condition::median::median;
 use std::ops::Range;
 
 /// A stretch that is not quiet. Indices are samples.
@@ -73,14 +74,6 @@ impl Blocks {
         let piece = &self.value[range];
         piece.iter().sum::<f64>() / piece.len().max(1) as f64
     }
-}
-
-fn median(mut values: Vec<f64>) -> f64 {
-    if values.is_empty() {
-        return 0.0;
-    }
-    let middle = values.len() / 2;
-    *values.select_nth_unstable_by(middle, f64::total_cmp).1
 }
 
 /// Noise of the block means: windows of the record are ranked by the scatter of second differences, which neither a level

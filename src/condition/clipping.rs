@@ -4,6 +4,7 @@
 //! where equal readings are too improbable for the roughness of the signal around them, or where they stand at a converter's
 //! end code.
 
+use crate::condition::median::median;
 use std::ops::Range;
 
 /// Readings that stand at a limit.
@@ -62,7 +63,7 @@ fn at_top(values: &[f64], sign: f64) -> Option<Clipping> {
     // The stand at rest repeats its reading for long, and may do so at another level after the burn. That is no limit: a limit
     // lies well away from where the record starts and ends.
     let ends = (finite.len() / 50).max(5);
-    let at_rest = median(&finite[..ends]).max(median(&finite[finite.len() - ends..]));
+    let at_rest = median(finite[..ends].to_vec()).max(median(finite[finite.len() - ends..].to_vec()));
     let height = limit - at_rest;
     if !(height > AWAY_FROM_REST * (limit - lowest) && step > 0.0) {
         return None;
@@ -74,12 +75,6 @@ fn at_top(values: &[f64], sign: f64) -> Option<Clipping> {
     // The amplifier's own noise on its limit: a narrow band in place of one reading.
     let band = in_noise_band(values, sign, limit, step, height)?;
     Some(clipping(sign, limit, band))
-}
-
-fn median(values: &[f64]) -> f64 {
-    let mut sorted = values.to_vec();
-    sorted.sort_by(f64::total_cmp);
-    sorted.get(sorted.len() / 2).copied().unwrap_or(f64::NAN)
 }
 
 fn clipping(sign: f64, limit: f64, ranges: Vec<Range<usize>>) -> Clipping {

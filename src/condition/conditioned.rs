@@ -2,6 +2,7 @@
 //! long as the data allow; and the peak of that curve with the bias that noise and smoothing give it taken out.
 
 use crate::condition::adaptive::{self, Smoothed};
+use crate::condition::median::median;
 use crate::condition::response::{self, Response};
 use crate::condition::scatter::Scatter;
 use crate::condition::{corner, lowpass, peak, spectrum};
@@ -52,14 +53,6 @@ const PARTS: usize = 16;
 const NEARLY_HIGHEST: f64 = 0.97;
 /// The burst counts as level, to see how it scatters, from its first to its last crossing of this share of the peak.
 const LEVEL_PART: f64 = 0.3;
-
-fn median(mut values: Vec<f64>) -> f64 {
-    if values.is_empty() {
-        return 0.0;
-    }
-    let middle = values.len() / 2;
-    *values.select_nth_unstable_by(middle, f64::total_cmp).1
-}
 
 /// Straight-line values of a sampled curve at an even grid over its own span.
 fn even_grid(time_s: &[f64], value: &[f64], interval_s: f64) -> (Vec<f64>, Vec<f64>) {

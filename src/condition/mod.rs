@@ -8,6 +8,7 @@ pub mod conditioned;
 pub mod corner;
 pub mod glitch;
 pub mod lowpass;
+pub mod median;
 pub mod peak;
 pub mod quiet;
 pub mod response;

@@ -5,6 +5,7 @@
 //! taken away before and put there last, so that a folder with it always holds files that belong together.
 
 use crate::problem::Problem;
+use crate::run;
 use std::fs::{self, File};
 use std::io::{self, Write};
 use std::path::{Path, PathBuf};
@@ -22,24 +23,12 @@ impl OutputFile {
     }
 }
 
-/// Longest name of a folder taken, in bytes; common file systems stop at 255.
-const LONGEST_ID: usize = 200;
-
 /// The folder of a run within `out`; nothing is made yet.
 ///
 /// # Errors
-/// An id that is empty, too long, starts with a dot, or holds a path separator or a control character.
+/// An id that cannot name a folder ([`run::check_id`]).
 pub fn run_folder(out: &Path, id: &str) -> Result<PathBuf, Problem> {
-    let bad = id.is_empty()
-        || id.len() > LONGEST_ID
-        || id.starts_with('.')
-        || id.trim() != id
-        || id.chars().any(|c| matches!(c, '/' | '\\') || c.is_control());
-    if bad {
-        return Err(Problem::new(format!("the run's id {id:?} cannot name a folder"))
-            .expected(format!("1 to {LONGEST_ID} characters without / or \\, not starting with a dot or a space"))
-            .remedy("give the run a plain id, such as id = \"FM-07\""));
-    }
+    run::check_id(id)?;
     Ok(out.join(id))
 }
 

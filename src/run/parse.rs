@@ -34,8 +34,10 @@ pub fn check_id(id: &str) -> Result<(), Problem> {
         "is empty"
     } else if id.contains(['/', '\\']) {
         "holds a path separator"
-    } else if id.contains("..") || id == "." {
+    } else if id.contains("..") {
         "holds dots that lead out of the folder"
+    } else if id.starts_with('.') {
+        "starts with a dot, which hides the folder"
     } else if id.chars().any(char::is_control) {
         "holds a control character"
     } else if id.trim() != id {
@@ -399,7 +401,7 @@ mod tests {
 
     #[test]
     fn ids_that_could_leave_the_folder_are_refused() {
-        for id in ["", " ", "a/b", "a\\b", "..", "a..b", "a\nb", ".", " a", "a\u{0}b"] {
+        for id in ["", " ", "a/b", "a\\b", "..", "a..b", "a\nb", ".", ".hidden", " a", "a\u{0}b"] {
             assert!(check_id(id).is_err(), "{id:?}");
         }
         for id in ["FM-07", "2026-05-14 second", "feu n° 3", "v1.2"] {
