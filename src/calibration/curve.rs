@@ -55,13 +55,11 @@ impl Calibration {
         match &error.shape {
             ErrorShape::Coefficients(change) => -value(change, force_n) / self.slope(force_n),
             ErrorShape::Relative(relative) => relative * force_n,
-            ErrorShape::Beyond { from_n, degree, coefficient } => {
+            ErrorShape::Beyond { from_n, degree, coefficient, side } => {
                 let size = force_n.abs();
-                if size <= *from_n {
-                    return 0.0;
-                }
                 let power = size.powi(degree.saturating_sub(1) as i32);
-                (coefficient * power * (size - from_n)).copysign(coefficient * force_n)
+                let reach = if force_n * side < 0.0 { size + from_n } else { (size - from_n).max(0.0) };
+                (coefficient * power * reach).copysign(coefficient * force_n)
             }
         }
     }
@@ -270,10 +268,14 @@ mod tests {
         // second order: the slope itself moves by 1e-4 in 2.14
         assert!((moved - expected).abs() < 1e-4 * expected.abs(), "{moved} {expected}");
         assert_eq!(bent.force_error_n(&error(ErrorShape::Relative(0.01)), -50.0), -0.5);
-        let beyond = error(ErrorShape::Beyond { from_n: 100.0, degree: 2, coefficient: 1e-5 });
+        let beyond = error(ErrorShape::Beyond { from_n: 100.0, degree: 2, coefficient: 1e-5, side: 0.0 });
         assert_eq!(bent.force_error_n(&beyond, 100.0), 0.0);
         assert!((bent.force_error_n(&beyond, 200.0) - 1e-5 * 200.0 * 100.0).abs() < 1e-12);
         assert!(bent.force_error_n(&beyond, -200.0) < 0.0);
+        // A bend of c F² under a line through 0 and 100 N hides c F (100 - F); on the other side it shows as c F (100 + |F|).
+        let pulled = error(ErrorShape::Beyond { from_n: 100.0, degree: 2, coefficient: 1e-5, side: 1.0 });
+        assert_eq!(bent.force_error_n(&pulled, 90.0), 0.0);
+        assert!((bent.force_error_n(&pulled, -50.0) + 1e-5 * 50.0 * 150.0).abs() < 1e-12);
     }
 
     #[test]

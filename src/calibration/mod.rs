@@ -49,8 +49,10 @@ pub enum ErrorShape {
     /// Relative change of force.
     Relative(f64),
     /// Change of force that is nil while |F| is up to `from_n` and is `coefficient` |F|^(degree − 1) (|F| − from_n)
-    /// beyond it, with the sign of F; the coefficient in N per N^degree.
-    Beyond { from_n: f64, degree: usize, coefficient: f64 },
+    /// beyond it, with the sign of F; the coefficient in N per N^degree. Against `side` (1: only forces above nil were calibrated,
+    /// -1: only below, 0: both) nothing of the curve was seen, and a bend that the line hides on one side counts from nil on,
+    /// `coefficient` |F|^(degree − 1) (|F| + from_n).
+    Beyond { from_n: f64, degree: usize, coefficient: f64, side: f64 },
 }
 
 /// Readings to newtons; of a pressure transducer, to pascals, and every `_n` below is then in Pa.

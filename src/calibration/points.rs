@@ -129,7 +129,8 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
             points.gravity.value_m_s2, points.gravity.source
         ));
     }
-    match extrapolation(evidence, &choice, low.abs().max(high.abs())) {
+    let side = f64::from(i8::from(low >= 0.0) - i8::from(high <= 0.0));
+    match extrapolation(evidence, &choice, low.abs().max(high.abs()), side) {
         Some(direction) => errors.push(direction),
         None => calibration
             .cautions
@@ -235,9 +236,9 @@ fn push_directions(errors: &mut Vec<ErrorDirection>, source: ScaleSource, covari
     }
 }
 
-/// What the next degree could add beyond the heaviest weight: its coefficient as the points give it, and its standard
+/// What the next degree could add beyond the heaviest weight, or on the side where no weight was: its coefficient as the points give it, and its standard
 /// error, as one standard uncertainty; `None` where the points cannot carry that degree.
-fn extrapolation(evidence: Evidence<'_>, choice: &Choice, from_n: f64) -> Option<ErrorDirection> {
+fn extrapolation(evidence: Evidence<'_>, choice: &Choice, from_n: f64, side: f64) -> Option<ErrorDirection> {
     let degree = choice.degree + 1;
     let next = fit::fit(evidence.forces_n, evidence.readings, degree)?;
     let power = next.scale_n.powi(degree as i32);
@@ -248,7 +249,7 @@ fn extrapolation(evidence: Evidence<'_>, choice: &Choice, from_n: f64) -> Option
     let coefficient = coefficient.hypot(error) / per_newton;
     coefficient.is_finite().then_some(ErrorDirection {
         source: ScaleSource::Extrapolation,
-        shape: ErrorShape::Beyond { from_n, degree, coefficient },
+        shape: ErrorShape::Beyond { from_n, degree, coefficient, side },
     })
 }
 
