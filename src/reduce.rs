@@ -175,6 +175,18 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
     let mut segmentation = events::find(&time_s, &force_n, inputs.log.interval_s, expectation);
     let chosen =
         bursts::choose(&segmentation, &time_s, &run.check_loads, &run.reduction).map_err(|p| p.in_file(log_file))?;
+    // Where the propellant was not weighed nobody knows where a vertical stand's zero will come to rest.
+    let expected_shift = match (orientation, weight_n) {
+        (Orientation::Horizontal, _) => Some(0.0),
+        (Orientation::NozzleUp, Some(w)) => Some(-w),
+        (Orientation::NozzleDown, Some(w)) => Some(w),
+        _ => None,
+    };
+    if let Some(shift) = expected_shift {
+        // The cell may pull where the weights pushed: then its zero moves the other way too.
+        let turned = segmentation.events[chosen].impulse.signum();
+        bursts::take_up_tail(&mut segmentation, chosen, turned * shift, &time_s, &force_n);
+    }
     let mut burn = segmentation.events[chosen];
     let sign = if burn.impulse < 0.0 { -1.0 } else { 1.0 };
     if sign < 0.0 {

@@ -224,6 +224,15 @@ fn plain_firings_come_out_true() {
     all_hold(&failures);
 }
 
+/// A tail with a time constant of 0.9 s under a falling drift looks level for 0.7 s at 2 % of peak, long before it is gone.
+#[test]
+fn a_tail_that_seems_level_for_a_moment_belongs_to_the_burn() {
+    let case = run(random_scenario_kind(Kind::Plain, 24_044));
+    let found = case.reduction.expect("a reduction").firing.quantities.total_impulse.expect("an impulse").value;
+    let error = found / case.truth.total_impulse_n_s - 1.0;
+    assert!(error.abs() < 0.0015, "{error}");
+}
+
 fn kind_holds(kind: Kind, count: u64, rows: &[Row]) {
     let cases = run_kind(kind, count);
     let mut failures = judge(&format!("{kind:?}"), &cases.iter().collect::<Vec<_>>(), rows);

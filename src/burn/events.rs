@@ -278,7 +278,8 @@ impl Finder<'_> {
     }
 }
 
-fn measure(event: &mut Event, time_s: &[f64], data: &[f64], block: usize) {
+/// Impulse and peak of an event over the straight line between its two levels.
+pub fn measure(event: &mut Event, time_s: &[f64], data: &[f64], block: usize) {
     let (t, y) = (&time_s[event.start..event.end], &data[event.start..event.end]);
     let Some((&first, &last)) = t.first().zip(t.last()) else { return };
     let span = (last - first).max(f64::MIN_POSITIVE);

@@ -1,6 +1,6 @@
 //! The burn among the bursts, and what the others are.
 
-use crate::burn::events::{Event, Segmentation};
+use crate::burn::events::{self, Event, Segmentation};
 use crate::firing::BurstKind;
 use crate::problem::Problem;
 use crate::run::{CheckLoadSpec, ReductionSpec};
@@ -51,6 +51,60 @@ pub fn choose(
                 .expected("a stretch in which the force rises out of the quiet record")
                 .remedy("check that `column` in [[channel]] names the load cell, or look with `burntally inspect`")
         })
+}
+
+/// A level after the burn that is off by this share of its peak may be a tail that seemed level for a moment.
+const TAIL_LEVEL: f64 = 0.002;
+/// The level after what follows must be off by at most this share of that.
+const TAIL_GONE: f64 = 0.3;
+/// What follows may stand out by this share of the burn's peak and still be its tail.
+const TAIL_PEAK: f64 = 0.1;
+
+/// A block is off the level of rest from so many standard deviations of a block on.
+const REST_SIGMAS: f64 = 5.0;
+
+/// Joins the burn to what follows it where that is its own tail: a slow tail may look level for a moment, still above the zero that
+/// `shift` leads to from the level before, and the record comes down to that zero only later.
+pub fn take_up_tail(segmentation: &mut Segmentation, chosen: usize, shift: f64, time_s: &[f64], force_n: &[f64]) {
+    while let (Some(burn), Some(next)) =
+        (segmentation.events.get(chosen).copied(), segmentation.events.get(chosen + 1).copied())
+    {
+        let next = if next.cut_at_end { come_to_rest(&next, segmentation, force_n) } else { next };
+        let sign = burn.impulse.signum();
+        let zero = burn.level_before + shift;
+        let (off, left) = ((burn.level_after - zero) * sign, (next.level_after - zero).abs());
+        let gap_s = time_s[next.start] - time_s[burn.end - 1];
+        let is_tail = off > TAIL_LEVEL * burn.peak.abs()
+            && left < TAIL_GONE * off
+            && next.peak.abs() < TAIL_PEAK * burn.peak.abs()
+            && gap_s < 0.5 * (time_s[burn.end - 1] - time_s[burn.start]);
+        if !is_tail {
+            break;
+        }
+        let mut joined = Event { end: next.end, cut_at_end: next.cut_at_end, level_after: next.level_after, ..burn };
+        events::measure(&mut joined, time_s, force_n, segmentation.block);
+        segmentation.events[chosen] = joined;
+        segmentation.events.remove(chosen + 1);
+        segmentation.quiet.retain(|q| q.start < burn.end || q.start >= next.end);
+        if next.end < force_n.len() && !segmentation.quiet.iter().any(|q| q.start >= next.end) {
+            segmentation.quiet.push(next.end..force_n.len());
+        }
+    }
+}
+
+/// An event that the search left open to the end of the record, ended where its last third's level is first kept to.
+fn come_to_rest(event: &Event, segmentation: &Segmentation, force_n: &[f64]) -> Event {
+    let last = event.end - (event.end - event.start) / 3;
+    let mean = |f: &[f64]| f.iter().sum::<f64>() / f.len().max(1) as f64;
+    let level = mean(&force_n[last.min(event.end - 1)..event.end]);
+    let near = REST_SIGMAS * segmentation.block_noise;
+    let block = segmentation.block.max(1);
+    let from = (event.start..last)
+        .step_by(block)
+        .filter(|i| (mean(&force_n[*i..(*i + block).min(event.end)]) - level).abs() > near)
+        .last()
+        .map_or(event.start, |i| (i + block).min(last));
+    Event { end: from, cut_at_end: false, level_after: level, ..*event }
 }
 
 /// Drops events too small beside the burn to be told from the record's own unrest, and joins the quiet on either side: a tail
