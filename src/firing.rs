@@ -48,6 +48,35 @@ pub struct Quantities {
     pub extrapolated_impulse: Option<Figure>,
 }
 
+impl Quantities {
+    /// The figure of a key, where there is one.
+    pub fn by_key_mut(&mut self, key: &str) -> Option<&mut Figure> {
+        match key {
+            "total_impulse" => &mut self.total_impulse,
+            "burn_impulse" => &mut self.burn_impulse,
+            "burn_time" => &mut self.burn_time,
+            "action_time" => &mut self.action_time,
+            "average_thrust" => &mut self.average_thrust,
+            "peak_thrust" => &mut self.peak_thrust,
+            "initial_thrust" => &mut self.initial_thrust,
+            "rise_time" => &mut self.rise_time,
+            "ignition_delay" => &mut self.ignition_delay,
+            "propellant_mass" => &mut self.propellant_mass,
+            "expelled_mass" => &mut self.expelled_mass,
+            "specific_impulse" => &mut self.specific_impulse,
+            "effective_exhaust_velocity" => &mut self.effective_exhaust_velocity,
+            "peak_pressure" => &mut self.peak_pressure,
+            "mean_pressure" => &mut self.mean_pressure,
+            "characteristic_velocity" => &mut self.characteristic_velocity,
+            "thrust_coefficient" => &mut self.thrust_coefficient,
+            "burn_rate" => &mut self.burn_rate,
+            "extrapolated_impulse" => &mut self.extrapolated_impulse,
+            _ => return None,
+        }
+        .as_mut()
+    }
+}
+
 #[derive(Debug, Clone, PartialEq, Default, Serialize, Deserialize)]
 pub struct RunRecord {
     pub id: String,
@@ -141,8 +170,18 @@ pub struct Provenance {
     pub inputs: Vec<InputFile>,
     pub records: Records,
     pub repairs: Vec<Repair>,
+    /// How the 95 % intervals were drawn.
+    #[serde(default)]
+    pub monte_carlo: Option<MonteCarlo>,
     /// What was found, chosen or assumed on the way, one sentence each.
     pub findings: Vec<String>,
+}
+
+/// Trials behind the 95 % intervals (JCGM 101:2008); the seed makes them the same each time.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize, Deserialize)]
+pub struct MonteCarlo {
+    pub trials: usize,
+    pub seed: u64,
 }
 
 /// How the curve was conditioned.

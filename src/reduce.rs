@@ -13,11 +13,12 @@ use crate::burn::events::{self, Event, Expectation, Segmentation};
 use crate::calibration::Calibration;
 use crate::condition::clipping;
 use crate::firing::{
-    Burst, BurstKind, Conditioning, Curves, Firing, InputFile, Provenance, RunRecord, SCHEMA, StandRecord,
+    Burst, BurstKind, Conditioning, Curves, Firing, InputFile, MonteCarlo, Provenance, RunRecord, SCHEMA, StandRecord,
 };
 use crate::log::Log;
 use crate::problem::Problem;
 use crate::run::{self, Gravity, Orientation, RunSpec};
+use crate::uncertainty::monte_carlo;
 
 /// All that a reduction depends on, already read.
 #[derive(Debug, Clone)]
@@ -124,6 +125,7 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
             inputs: inputs.files.clone(),
             records: inputs.log.records,
             repairs: inputs.log.repairs.clone(),
+            monte_carlo: Some(MonteCarlo { trials: monte_carlo::TRIALS, seed: monte_carlo::SEED }),
             findings,
         },
     };

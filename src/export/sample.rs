@@ -131,6 +131,7 @@ pub(crate) fn firing() -> Firing {
                 kind: "glitch".to_owned(),
                 message: "one sample at full scale, replaced by its neighbours' line".to_owned(),
             }],
+            monte_carlo: None,
             findings: vec!["the delimiter is a semicolon".to_owned()],
         },
     }

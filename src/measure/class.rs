@@ -4,7 +4,6 @@
 //! are from memory and consistent with the rounded printed ones.
 
 use crate::firing::MotorClass;
-use crate::uncertainty::statistics;
 use std::collections::BTreeMap;
 
 /// Upper edge of A, N.s; each letter's is twice the one before.
@@ -56,22 +55,26 @@ pub fn band(impulse: f64) -> Option<Band> {
     Some(Band { letter: letter(index), lower, upper })
 }
 
-/// Class of a motor; probabilities where the impulse's standard uncertainty is known.
-pub fn classify(impulse: f64, standard_uncertainty: Option<f64>, average_thrust_n: f64) -> Option<MotorClass> {
+/// Class of a motor; probabilities as the shares of `trials` of the impulse, where there are any.
+pub fn classify(impulse: f64, trials: Option<&[f64]>, average_thrust_n: f64) -> Option<MotorClass> {
     let own = band(impulse)?;
-    let probability = standard_uncertainty.filter(|u| *u > 0.0).map(|u| {
-        let mut shares = BTreeMap::new();
-        let mut from = (impulse - 6.0 * u).max(own.lower.min(impulse) * 1e-3).max(1e-9);
-        while from < impulse + 6.0 * u {
-            let Some(b) = band(from) else { break };
-            let share =
-                statistics::normal_cdf((b.upper - impulse) / u) - statistics::normal_cdf((b.lower - impulse) / u);
-            if share > 5e-5 {
-                shares.insert(b.letter, (share * 1e4).round() / 1e4);
+    let probability = trials.filter(|t| !t.is_empty()).map(|trials| {
+        let mut counts: BTreeMap<String, usize> = BTreeMap::new();
+        let mut last: Option<Band> = None;
+        for trial in trials {
+            // Most trials fall into the band of the one before.
+            if !last.as_ref().is_some_and(|b| *trial > b.lower && *trial <= b.upper) {
+                last = band(*trial);
             }
-            from = b.upper * (1.0 + 1e-12);
+            if let Some(band) = &last {
+                match counts.get_mut(&band.letter) {
+                    Some(count) => *count += 1,
+                    None => drop(counts.insert(band.letter.clone(), 1)),
+                }
+            }
         }
-        shares
+        let n = trials.len() as f64;
+        counts.into_iter().map(|(letter, count)| (letter, count as f64 / n)).collect()
     });
     Some(MotorClass {
         designation: format!("{}{:.0}", own.letter, average_thrust_n),
@@ -123,12 +126,14 @@ mod tests {
 
     #[test]
     fn probability_is_shared_between_neighbours_at_an_edge() {
-        let class = classify(640.0, Some(2.0), 150.2).expect("class");
+        let trials: Vec<f64> = (0..1000).map(|i| 630.0 + 0.02 * f64::from(i)).collect();
+        let class = classify(640.0, Some(&trials), 150.2).expect("class");
         assert_eq!((class.letter.as_str(), class.designation.as_str()), ("I", "I150"));
         assert!((class.position - 1.0).abs() < 1e-12);
+        // The upper edge, 640, belongs to I: 501 of the trials are at or below it.
         let p = class.probability.expect("probability");
-        assert!((p["I"] - 0.5).abs() < 1e-3 && (p["J"] - 0.5).abs() < 1e-3);
-        let sure = classify(500.0, Some(1.0), 100.0).expect("class").probability.expect("probability");
+        assert!((p["I"] - 0.501).abs() < 1e-9 && (p["J"] - 0.499).abs() < 1e-9, "{p:?}");
+        let sure = classify(500.0, Some(&trials[..10]), 100.0).expect("class").probability.expect("probability");
         assert_eq!(sure.get("I"), Some(&1.0));
     }
 }

@@ -8,7 +8,9 @@ use super::zero::{self, Zero};
 use super::{Record, force};
 use crate::burn::crossings::{self, Crossing};
 use crate::measure::integral;
-use crate::uncertainty::effects::Effect;
+use crate::run::Orientation;
+use crate::uncertainty::distribution::Shape;
+use crate::uncertainty::effects::{Acts, Effect};
 
 /// What the effects are computed from.
 pub(super) struct Work<'a> {
@@ -40,7 +42,9 @@ impl Work<'_> {
         if let Some(Some(u)) = mass_u
             && self.record.inputs.run.motor.propellant_mass_kg.is_some()
         {
-            effects.push(Effect { propellant_mass: u, ..Effect::of("propellant mass") });
+            let limits = self.record.inputs.run.motor.propellant_mass_kg.is_some_and(|m| m.limits.is_some());
+            let shape = if limits { Shape::Rectangular } else { Shape::Normal };
+            effects.push(Effect { propellant_mass: u, ..Effect::of("propellant mass").shaped(shape) });
         }
         if let Some(tail) = self.curve.tail {
             effects.push(Effect {
@@ -53,9 +57,27 @@ impl Work<'_> {
         (effects, known)
     }
 
+    /// The amounts that the effects move, as they were found.
+    pub fn found(&self, mass_kg: Option<f64>) -> Effect {
+        Effect {
+            total_impulse: self.total_impulse,
+            burn_impulse: self.burn_impulse,
+            burn_time: self.burn_time,
+            action_time: self.action_time,
+            peak_thrust: self.curve.peak.thrust_n,
+            initial_thrust: self.initial,
+            rise_time: self.rise_time.unwrap_or(0.0),
+            ignition_delay: self.delay.unwrap_or(0.0),
+            propellant_mass: mass_kg.unwrap_or(0.0),
+            extrapolated_impulse: self.curve.tail.map_or(0.0, |tail| tail.impulse),
+            action_impulse: integral::between(self.bt, self.bf, self.action.start.time_s, self.action.end.time_s),
+            ..Effect::default()
+        }
+    }
+
     /// Errors of the force scale: each independent direction of each channel's calibration, and the force ratio.
     fn scale(&self) -> (Vec<Effect>, bool) {
-        use crate::calibration::ScaleSource;
+        use crate::calibration::{ErrorShape, ScaleSource};
         let record = self.record;
         let mut effects = Vec::new();
         let mut known = true;
@@ -83,9 +105,24 @@ impl Work<'_> {
                     }
                     _ => 0.0,
                 };
+                let shape = match (direction.source, &direction.shape) {
+                    (ScaleSource::Fit, _) => {
+                        Shape::of_estimate(channel.calibration.fit_degrees_of_freedom.unwrap_or(f64::INFINITY))
+                    }
+                    // Limits of one error shared by all.
+                    (ScaleSource::Stated, _) | (ScaleSource::Weights, ErrorShape::Relative(_)) => Shape::Rectangular,
+                    _ => Shape::Normal,
+                };
                 effects.push(Effect {
+                    shape,
                     total_impulse: integral::trapezoid(self.bt, &change),
                     burn_impulse: integral::between(self.bt, &change, self.burn.start.time_s, self.burn.end.time_s),
+                    action_impulse: integral::between(
+                        self.bt,
+                        &change,
+                        self.action.start.time_s,
+                        self.action.end.time_s,
+                    ),
                     peak_thrust: change[peak_index],
                     initial_thrust: integral::between(
                         self.bt,
@@ -106,13 +143,22 @@ impl Work<'_> {
             }
         }
         if let Some(u) = record.inputs.run.stand.force_ratio.and_then(|r| r.standard_uncertainty) {
-            effects.push(self.relative("force ratio", u / record.force_ratio));
+            let limits = record.inputs.run.stand.force_ratio.is_some_and(|r| r.limits.is_some());
+            let share = u / record.force_ratio;
+            effects.push(Effect {
+                shape: if limits { Shape::Rectangular } else { Shape::Normal },
+                acts: Acts::DividesForce(share),
+                ..self.relative("force ratio", -share)
+            });
         }
         (effects, known)
     }
 
     fn relative(&self, source: &str, r: f64) -> Effect {
+        let from_force = self.record.inputs.run.motor.propellant_mass_kg.is_none();
         Effect {
+            propellant_mass: if from_force { self.zero.shift_mass_kg.map_or(0.0, |(kg, _)| r * kg) } else { 0.0 },
+            action_impulse: r * self.found(None).action_impulse,
             total_impulse: r * self.total_impulse,
             burn_impulse: r * self.burn_impulse,
             peak_thrust: r * self.curve.peak.thrust_n,
@@ -138,6 +184,7 @@ impl Work<'_> {
         Effect {
             total_impulse: integral::trapezoid(self.bt, &change),
             burn_impulse: integral::between(self.bt, &change, start.time_s, end.time_s),
+            action_impulse: integral::between(self.bt, &change, self.action.start.time_s, self.action.end.time_s),
             burn_time: -moved(start) - moved(end),
             action_time: -moved(&self.action.start) - moved(&self.action.end),
             peak_thrust: -course(self.curve.peak.time_s),
@@ -150,6 +197,10 @@ impl Work<'_> {
     fn zero(&self) -> Vec<Effect> {
         let baseline = &self.zero.baseline;
         let mass_per_newton = match (&self.zero.shift_mass_kg, self.record.inputs.run.motor.propellant_mass_kg) {
+            // Nozzle-up the mass is what the zero fell by, nozzle-down what it rose by.
+            (Some(_), None) if self.record.orientation == Orientation::NozzleDown => {
+                -1.0 / self.record.gravity.value_m_s2
+            }
             (Some(_), None) => 1.0 / self.record.gravity.value_m_s2,
             _ => 0.0,
         };
@@ -158,6 +209,7 @@ impl Work<'_> {
             let u = before.level_u;
             effects.push(Effect {
                 propellant_mass: u * mass_per_newton,
+                shape: Shape::of_estimate(before.samples.saturating_sub(2) as f64),
                 ..self.zero_effect("zero before", |t| u * baseline.sensitivity(t).0)
             });
         }
@@ -165,12 +217,14 @@ impl Work<'_> {
             let u = after.level_u;
             effects.push(Effect {
                 propellant_mass: -u * mass_per_newton,
+                shape: Shape::of_estimate(after.samples.saturating_sub(2) as f64),
                 ..self.zero_effect("zero after", |t| u * baseline.sensitivity(t).1)
             });
         }
         if self.zero.drift_u_n > 0.0 {
             let u = self.zero.drift_u_n;
-            effects.push(self.zero_effect("course of the zero's drift", |_| u));
+            // Between a straight line and a step at either end.
+            effects.push(self.zero_effect("course of the zero's drift", |_| u).shaped(Shape::Rectangular));
         }
         effects
     }
@@ -182,6 +236,7 @@ impl Work<'_> {
             Effect {
                 total_impulse: (density * duration).sqrt(),
                 burn_impulse: (density * self.burn_time).sqrt(),
+                action_impulse: (density * self.action_time).sqrt(),
                 initial_thrust: (density / self.initial_s).sqrt(),
                 ..Effect::of("noise")
             },
@@ -297,6 +352,10 @@ impl Work<'_> {
             action_time: r * self.action_time,
             rise_time: r * self.rise_time.unwrap_or(0.0),
             ignition_delay: r * self.delay.unwrap_or(0.0),
+            action_impulse: r * self.found(None).action_impulse,
+            extrapolated_impulse: r * self.found(None).extrapolated_impulse,
+            acts: Acts::StretchesTime(r),
+            shape: Shape::Rectangular,
             ..Effect::of("clock")
         }
     }

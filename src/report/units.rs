@@ -1,6 +1,7 @@
 //! What a person reads: SI or US customary units, rounded by the uncertainty.
 
 use crate::firing::Figure;
+use crate::quantity::STANDARD_GRAVITY_M_S2;
 
 /// Units on the screen, in pictures and on the page. Files for machines stay SI.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
@@ -21,11 +22,10 @@ const fn shown(symbol: &'static str, size_si: f64) -> Shown {
     Shown { symbol, size_si }
 }
 
-// Exact by definition: the international pound and foot (1959), standard gravity (CGPM 1901).
+// Exact by definition: the international pound and foot (1959).
 const POUND_KG: f64 = 0.453_592_37;
 const FOOT_M: f64 = 0.3048;
 const INCH_M: f64 = 0.0254;
-const STANDARD_GRAVITY_M_S2: f64 = 9.806_65;
 const POUND_FORCE_N: f64 = POUND_KG * STANDARD_GRAVITY_M_S2;
 const PSI_PA: f64 = POUND_FORCE_N / (INCH_M * INCH_M);
 

@@ -1,4 +1,6 @@
 //! How far each figure may be off, and what it owes that to.
 
+pub mod distribution;
 pub mod effects;
+pub mod monte_carlo;
 pub mod statistics;
