@@ -281,10 +281,11 @@ impl Work<'_> {
                 SMOOTHING_BIAS * curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
             let threshold = level * curve.peak.noise_u_n;
             let noise = self.time_for(c, level * curve.peak.thrust_n, error.hypot(threshold), rising);
+            // Within the interval of a crossing the middle is likelier than its ends (triangular).
             // The shape of a rise that passes within a few samples is known to a part of one interval only.
             let dt = curve.conditioned.interval_s;
             let steep = (c.slope * dt / (STEEP_SHARE * curve.peak.thrust_n)).min(1.0);
-            noise.hypot(c.sampling_half_width_s / 3f64.sqrt()).hypot(EDGE_SHARE * dt * steep)
+            noise.hypot(c.sampling_half_width_s / 6f64.sqrt()).hypot(EDGE_SHARE * dt * steep)
         };
         let (start_u, end_u) =
             (instant(&self.burn.start, BURN_LEVEL, true), instant(&self.burn.end, BURN_LEVEL, false));
