@@ -3,13 +3,14 @@
 use super::curve::{self, Curve};
 use super::sources::Work;
 use super::zero::Zero;
-use super::{Record, force};
+use super::{Record, force, pressure};
 use crate::burn::crossings::{self, Crossing};
 use crate::firing::{BudgetLine, BurnTimes, Figure, MotorClass, Quantities};
 use crate::measure::{class, integral};
+use crate::problem::Problem;
 use crate::quantity::STANDARD_GRAVITY_M_S2;
 use crate::run::Role;
-use crate::uncertainty::effects::{self, Budgets, DRAWN, Effect, Found, Propagated};
+use crate::uncertainty::effects::{self, Acts, Budgets, DRAWN, Effect, Found, Propagated};
 use crate::uncertainty::monte_carlo;
 use std::collections::BTreeMap;
 
@@ -36,6 +37,8 @@ pub(super) const STEEP_SHARE: f64 = 0.2;
 
 /// Half-width of the interval by trials against that by first order: between that of a single rectangular input (0.95 √3 / 1.96 =
 /// 0.84, less its scatter) and what skewness or a few degrees of freedom may do.
+/// What 20,000 trials leave open of the length of an interval.
+const AS_SHORT: f64 = 1.02;
 const LEAST_AGREEMENT: f64 = 0.82;
 const MOST_AGREEMENT: f64 = 1.10;
 
@@ -53,6 +56,8 @@ pub struct Figures {
     relative_u: f64,
     zero_u_n: f64,
     noise_u_n: f64,
+    /// Absolute chamber pressure at the samples of the zero's window, Pa.
+    pub pressure_pa: Option<Vec<f64>>,
     /// Mass that the weight shift speaks for, where it was the source.
     pub mass_from_shift: bool,
 }
@@ -155,7 +160,11 @@ fn thrust_limits(curve: &Curve, ends: &Ends) -> (f64, f64) {
     (start, end)
 }
 
-pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
+/// Reads every figure from the curve.
+///
+/// # Errors
+/// What the pressure channel is refused for.
+pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Result<Figures, Problem> {
     let run = &record.inputs.run;
     let mut findings = Vec::new();
     let (t, f) = (&record.time_s[zero.window.clone()], &zero.thrust_n);
@@ -228,6 +237,19 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         delay: delay.map(|d| d.0),
     };
     let (mut effects, scale_known) = work.effects(delay.map(|d| d.1), mass.as_ref().map(|m| m.1));
+    let pressure = pressure::measure(
+        record,
+        zero,
+        &pressure::Thrust { curve, burn: &burn, action: &action, beyond_burn: total_impulse / burn_impulse },
+    )?;
+    if let Some(pressure) = &pressure {
+        effects.extend(pressure.effects.iter().cloned());
+        // The same ends of the action time bound both integrals.
+        for effect in effects.iter_mut().filter(|e| e.action_time != 0.0 && e.acts == Acts::Adds) {
+            let edge = curve::at(&record.time_s[zero.window.clone()], &pressure.curve_pa, action.end.time_s);
+            effect.pressure_action += edge * effect.action_time;
+        }
+    }
     effects.retain(|e| !e.is_nil());
     let relative_u =
         Propagated::collect(&effects.iter().filter(|e| is_scale(&e.source)).cloned().collect::<Vec<_>>(), |e| {
@@ -281,6 +303,12 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         q.effective_exhaust_velocity = Some(fig("effective_exhaust_velocity", ve, "m/s", &|e| ve * relative(e), known));
         q.propellant_mass = Some(figure);
     }
+    let mut found = Found { amounts: work.found(mass.as_ref().map(|m| m.0)), mass_from_force: mass_from_shift };
+    if let Some(pressure) = &pressure {
+        let mass = mass.as_ref().map(|(kg, u_kg, _)| (*kg, u_kg.is_some()));
+        pressure.figures(&mut q, &mut found.amounts, run.motor.web_thickness_m.map(|w| w.value), mass, k, &mut fig);
+        findings.extend(pressure.findings.iter().cloned());
+    }
     if let (Some(before), Some(after)) = (run.motor.mass_before_kg, run.motor.mass_after_kg) {
         let u = before.standard_uncertainty.zip(after.standard_uncertainty).map(|(a, b)| a.hypot(b));
         let propagated = Propagated { lines: u.map(|u| ("weighing".to_string(), u)).into_iter().collect() };
@@ -301,7 +329,6 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
             figure.bound = Some("lower".to_string());
         }
     }
-    let found = Found { amounts: work.found(mass.as_ref().map(|m| m.0)), mass_from_force: mass_from_shift };
     let mut trials = effects::trials(&found, &effects, monte_carlo::TRIALS);
     let impulse_trials = std::mem::take(&mut trials[0]);
     let impulse_known = q.total_impulse.as_ref().is_some_and(|f| f.standard_uncertainty.is_some());
@@ -312,7 +339,8 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         .map(|q| q.level_u)
         .fold(0.0, f64::max)
         .hypot(zero.drift_u_n);
-    Figures {
+    Ok(Figures {
+        pressure_pa: pressure.map(|p| p.curve_pa),
         class: class::classify(total_impulse, impulse_known.then_some(impulse_trials.as_slice()), average),
         quantities: q,
         times,
@@ -325,7 +353,7 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         zero_u_n,
         noise_u_n: curve.peak.noise_u_n,
         mass_from_shift,
-    }
+    })
 }
 
 /// Puts the trials' shortest 95 % intervals in the place of the first-order ones, and says where the two ways do not agree.
@@ -334,8 +362,12 @@ fn draw_intervals(q: &mut Quantities, trials: impl Iterator<Item = Vec<f64>>, fi
         let Some(figure) = q.by_key_mut(key) else { continue };
         let (Some(u), Some(first_order)) = (figure.standard_uncertainty, figure.interval_95) else { continue };
         let Some(spread) = monte_carlo::spread(drawn) else { continue };
-        figure.interval_95 = Some(spread.shortest_95);
-        let half = 0.5 * (spread.shortest_95[1] - spread.shortest_95[0]);
+        // Of intervals that are as short as the trials can tell, the one with as much on either side.
+        let length = |i: [f64; 2]| i[1] - i[0];
+        let symmetric = length(spread.symmetric_95) < AS_SHORT * length(spread.shortest_95);
+        let interval = if symmetric { spread.symmetric_95 } else { spread.shortest_95 };
+        figure.interval_95 = Some(interval);
+        let half = 0.5 * length(interval);
         let expected = 0.5 * (first_order[1] - first_order[0]);
         if u > 0.0 && !(LEAST_AGREEMENT..MOST_AGREEMENT).contains(&(half / expected)) {
             findings.push(format!(

@@ -298,11 +298,18 @@ impl Work<'_> {
                 burn_time: -start_u,
                 burn_impulse: -level_n * start_u,
                 action_time: -up_u,
+                action_impulse: -ACTION_LEVEL * curve.peak.thrust_n * up_u,
                 rise_time: -up_u,
                 ignition_delay: delay_u.map_or(0.0, |u| u.hypot(start_u)),
                 ..Effect::of(source)
             },
-            Effect { burn_time: end_u, burn_impulse: level_n * end_u, action_time: down_u, ..Effect::of(source) },
+            Effect {
+                burn_time: end_u,
+                burn_impulse: level_n * end_u,
+                action_time: down_u,
+                action_impulse: ACTION_LEVEL * curve.peak.thrust_n * down_u,
+                ..Effect::of(source)
+            },
             Effect { rise_time: self.rise_time.map_or(0.0, |_| self.risen_u()), ..Effect::of(source) },
         ]
     }
