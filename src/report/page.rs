@@ -109,7 +109,10 @@ fn budget(firing: &Firing, units: Units) -> Vec<Value> {
                     context! { source => line.source.as_str(), u, share => fixed(line.share * 100.0, 1) }
                 })
                 .collect();
-            Some(context! { name => entry.name, lines })
+            let advice = advice::first_to_improve(firing.uncertainty_budget.get(entry.key)?).map(|(_, what, left)| {
+                format!("First to improve: {what}; half of it leaves {} % of ±.", fixed(left * 100.0, 0))
+            });
+            Some(context! { name => entry.name, lines, advice })
         })
         .collect()
 }

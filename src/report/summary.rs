@@ -53,6 +53,7 @@ pub fn summary(firing: &Firing, view: View, files: Option<(&Path, &[&str])>) -> 
     let mut lines = Vec::new();
     heading(firing, view, &mut lines);
     figures(firing, view, &mut lines);
+    improvement(firing, &mut lines);
     checks(firing, view, &mut lines);
     if let Some((folder, names)) = files {
         lines.push(String::new());
@@ -115,6 +116,22 @@ fn heading(firing: &Firing, view: View, lines: &mut Vec<String>) {
             lines.push(format!("  {}  {text}", view.paint(&format!("{:<18}", class.designation), Tone::Strong)));
         }
         None => lines.push(format!("  {:<19} not known", "class")),
+    }
+}
+
+/// What would narrow the total impulse most.
+fn improvement(firing: &Firing, lines: &mut Vec<String>) {
+    let budget = firing.uncertainty_budget.get("total_impulse").map(Vec::as_slice).unwrap_or_default();
+    if let Some((share, what, left)) = advice::first_to_improve(budget) {
+        lines.extend(wrapped(
+            &format!(
+                "narrower first by {what} ({} of the variance of total impulse; half of it leaves {} of ±)",
+                percent(share),
+                percent(left)
+            ),
+            "  ",
+            "    ",
+        ));
     }
 }
 
