@@ -14,12 +14,25 @@ pub struct Figure {
     pub unit: String,
     pub standard_uncertainty: Option<f64>,
     pub interval_95: Option<[f64; 2]>,
-    /// `lower` where the true value is at least this.
+    /// `lower` where the true value is at least this, `upper` where it is at most this.
     #[serde(skip_serializing_if = "Option::is_none", default)]
     pub bound: Option<String>,
     /// Where the value came from, when that is not the usual way.
     #[serde(skip_serializing_if = "Option::is_none", default)]
     pub source: Option<String>,
+    /// Beside a bound: what the figure may have been. Never in the place of the bound.
+    #[serde(skip_serializing_if = "Option::is_none", default)]
+    pub estimate: Option<Estimate>,
+}
+
+/// What a figure that is known by a bound only may have been, in the figure's unit.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Estimate {
+    pub value: f64,
+    pub standard_uncertainty: Option<f64>,
+    pub interval_95: Option<[f64; 2]>,
+    /// What it rests on.
+    pub method: String,
 }
 
 /// Every figure of the contract; `None` (null) where it is not known.

@@ -2,12 +2,14 @@
 
 mod bursts;
 mod checks;
+mod clipped;
 mod curve;
 mod figures;
 mod force;
 mod pressure;
 mod sources;
 mod stand;
+mod steady;
 mod zero;
 
 use crate::burn::events::{self, Event, Expectation, Segmentation};

@@ -60,6 +60,7 @@ pub(crate) fn figure(value: f64, unit: &str, standard_uncertainty: f64) -> Figur
         interval_95: Some([value - 1.96 * standard_uncertainty, value + 1.96 * standard_uncertainty]),
         bound: None,
         source: None,
+        estimate: None,
     }
 }
 

@@ -3,7 +3,7 @@
 use super::curve::{self, Curve};
 use super::sources::Work;
 use super::zero::Zero;
-use super::{Record, force, pressure};
+use super::{Record, clipped, force, pressure};
 use crate::burn::crossings::{self, Crossing};
 use crate::firing::{BudgetLine, BurnTimes, Figure, MotorClass, Quantities};
 use crate::measure::{class, integral};
@@ -240,7 +240,14 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Result<Figure
     let pressure = pressure::measure(
         record,
         zero,
-        &pressure::Thrust { curve, burn: &burn, action: &action, beyond_burn: total_impulse / burn_impulse },
+        &pressure::Thrust {
+            curve,
+            burn: &burn,
+            action: &action,
+            total_impulse,
+            beyond_burn: total_impulse / burn_impulse,
+        },
+        &mut findings,
     )?;
     if let Some(pressure) = &pressure {
         effects.extend(pressure.effects.iter().cloned());
@@ -248,6 +255,9 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Result<Figure
         for effect in effects.iter_mut().filter(|e| e.action_time != 0.0 && e.acts == Acts::Adds) {
             let edge = curve::at(&record.time_s[zero.window.clone()], &pressure.curve_pa, action.end.time_s);
             effect.pressure_action += edge * effect.action_time;
+            // So do those of the burn time.
+            let edge = curve::at(&record.time_s[zero.window.clone()], &pressure.curve_pa, end_s);
+            effect.pressure_total += edge * effect.burn_time;
         }
     }
     effects.retain(|e| !e.is_nil());
@@ -307,7 +317,6 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Result<Figure
     if let Some(pressure) = &pressure {
         let mass = mass.as_ref().map(|(kg, u_kg, _)| (*kg, u_kg.is_some()));
         pressure.figures(&mut q, &mut found.amounts, run.motor.web_thickness_m.map(|w| w.value), mass, k, &mut fig);
-        findings.extend(pressure.findings.iter().cloned());
     }
     if let (Some(before), Some(after)) = (run.motor.mass_before_kg, run.motor.mass_after_kg) {
         let u = before.standard_uncertainty.zip(after.standard_uncertainty).map(|(a, b)| a.hypot(b));
@@ -333,6 +342,7 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Result<Figure
     let impulse_trials = std::mem::take(&mut trials[0]);
     let impulse_known = q.total_impulse.as_ref().is_some_and(|f| f.standard_uncertainty.is_some());
     draw_intervals(&mut q, std::iter::once(impulse_trials.clone()).chain(trials.into_iter().skip(1)), &mut findings);
+    clipped::estimate(record, zero, curve, pressure.as_ref(), &mut q, &mut findings);
     let zero_u_n = [zero.baseline.before, zero.baseline.after]
         .iter()
         .flatten()

@@ -2,13 +2,17 @@
 
 use super::curve::Curve;
 use super::figures::Ends;
+use super::steady::{self, Course};
 use super::zero::Zero;
 use super::{Record, force};
+use crate::calibration::{Calibration, ErrorShape};
 use crate::condition::{clipping, conditioned};
 use crate::firing::{Figure, Quantities};
+use crate::log::Column;
 use crate::measure::integral;
 use crate::measure::pressure::{self, WebTime};
 use crate::problem::Problem;
+use crate::quantity::Measured;
 use crate::run::{PressureReference, Role};
 use crate::uncertainty::distribution::Shape;
 use crate::uncertainty::effects::{Acts, Effect};
@@ -20,24 +24,42 @@ const LAPSE_PER_M: f64 = 2.255_77e-5;
 const LAPSE_EXPONENT: f64 = 5.255_88;
 /// How far the weather may take the air pressure from that, limits, Pa (common practice, no source).
 const WEATHER_PA: f64 = 3000.0;
-/// A change of thrust over pressure between the halves of the burn from which on it is worth a look.
-const STEADY: f64 = 0.03;
+/// A barometer read to a hectopascal: limits of a stated air pressure without limits, Pa.
+const BAROMETER_PA: f64 = 100.0;
+/// Air pressures between which people live, Pa: a stated one outside is worth a look.
+const LIVEABLE_PA: std::ops::Range<f64> = 45_000.0..110_000.0;
+/// Quiet samples below which the zero counts as not seen.
+const LEAST_QUIET: usize = 8;
+/// Parts of a quiet stretch whose means show what slow noise does to its level.
+const BLOCKS: usize = 10;
+/// Standard errors from which on a shift of the zero counts as seen.
+const SEEN: f64 = 3.0;
+/// The pressure must rise above its noise by this to be one.
+const ABOVE_NOISE: f64 = 10.0;
 
 /// The pressure of one firing.
 pub(super) struct Pressure {
     /// Absolute, Pa, at the samples of the zero's window, conditioned.
     pub curve_pa: Vec<f64>,
+    /// What of it is air: the rest pushes.
+    pub air_pa: f64,
     pub peak_pa: f64,
+    /// What noise leaves of the highest pressure, Pa.
+    pub peak_noise_pa: f64,
     pub action_integral_pa_s: f64,
     /// Over the burn time, raised by the share of the impulse outside it.
     pub total_integral_pa_s: f64,
     pub throat_area_m2: Option<f64>,
     pub web_s: Option<f64>,
     pub effects: Vec<Effect>,
-    /// The scale of the channel has a stated error.
+    /// The scale of the channel has a stated error, and its zero was seen.
     pub known: bool,
+    pub throat_known: bool,
+    pub web_known: bool,
+    /// Cut at a limit during the burn.
     pub clipped: bool,
-    pub findings: Vec<String>,
+    /// The thrust was.
+    pub thrust_clipped: bool,
 }
 
 /// Air pressure outside the motor, Pa, half its limits' width, and where it came from.
@@ -45,20 +67,83 @@ fn outside(record: &Record<'_>) -> (f64, f64, String) {
     let run = &record.inputs.run;
     if let Some(stated) = run.conditions.get("air_pressure") {
         let get = |key: &str| stated.get(key).and_then(serde_json::Value::as_f64);
-        if let Some(value) = get("value") {
-            // A barometer read to a hectopascal.
-            let limits = get("standard_uncertainty").map_or(100.0, |u| u * 3f64.sqrt());
-            return (value, limits, "air pressure as stated under [conditions]".into());
+        let pressure = stated.get("unit").and_then(serde_json::Value::as_str) == Some("Pa");
+        if let Some(value) = get("value").filter(|v| pressure && *v > 0.0) {
+            let stated_limits = get("standard_uncertainty").map(|u| u * 3f64.sqrt());
+            let limits = stated_limits.unwrap_or(BAROMETER_PA);
+            let assumed = if stated_limits.is_some() { "" } else { " (limits assumed)" };
+            let odd = if LIVEABLE_PA.contains(&value) { "" } else { ", an unlikely one: check its unit" };
+            let words = format!(
+                "air pressure {:.1} hPa ± {:.1} hPa{assumed} as stated under [conditions]{odd}",
+                value / 100.0,
+                limits / 100.0
+            );
+            return (value, limits, words);
         }
     }
     let height = run.site.height_m.map_or(0.0, |h| h.value);
-    let value = SEA_LEVEL_PA * (1.0 - LAPSE_PER_M * height).powf(LAPSE_EXPONENT);
+    let value = SEA_LEVEL_PA * (1.0 - LAPSE_PER_M * height).max(0.0).powf(LAPSE_EXPONENT);
     let words = format!(
-        "no air_pressure under [conditions]: {:.0} hPa ± {:.0} hPa taken from the standard atmosphere at {height:.0} m",
+        "no air_pressure in a unit of pressure under [conditions]: {:.0} hPa ± {:.0} hPa taken from the standard atmosphere at {}",
         value / 100.0,
-        WEATHER_PA / 100.0
+        WEATHER_PA / 100.0,
+        run.site
+            .height_m
+            .map_or("sea level, since [site] gives no height".to_string(), |h| format!("{:.0} m", h.value))
     );
     (value, WEATHER_PA, words)
+}
+
+/// Level of a quiet stretch with its standard uncertainty, and the standard deviation of single samples.
+#[derive(Debug, Clone, Copy)]
+struct Level {
+    pa: f64,
+    u_pa: f64,
+    sample_pa: f64,
+}
+
+impl Level {
+    fn of(values: &[f64]) -> Option<Level> {
+        if values.len() < LEAST_QUIET {
+            return None;
+        }
+        let mean = |v: &[f64]| v.iter().sum::<f64>() / v.len() as f64;
+        let deviation = |v: &[f64], about: f64| {
+            (v.iter().map(|x| (x - about).powi(2)).sum::<f64>() / (v.len() - 1).max(1) as f64).sqrt()
+        };
+        let pa = mean(values);
+        let sample_pa = deviation(values, pa);
+        let white = sample_pa / (values.len() as f64).sqrt();
+        // Slow noise moves the mean by more than white noise of the same size would.
+        let block = values.len() / BLOCKS;
+        let slow = if block >= LEAST_QUIET {
+            let means: Vec<f64> = values.chunks_exact(block).map(mean).collect();
+            deviation(&means, pa) / (means.len() as f64).sqrt()
+        } else {
+            0.0
+        };
+        Some(Level { pa, u_pa: white.max(slow), sample_pa })
+    }
+}
+
+/// The channel at rest on either side of the burst, readings in Pa on its own scale.
+struct Rest {
+    before: Option<Level>,
+    /// Shift of the zero across the burst where one is seen, Pa.
+    drift_pa: f64,
+}
+
+/// `burst`: samples of the burst in the window.
+fn rest(reading_pa: &[f64], burst: std::ops::Range<usize>) -> Rest {
+    let before = Level::of(&reading_pa[..burst.start.min(reading_pa.len())]);
+    // Gas may still leave the chamber just after the burst: the later half of what follows it.
+    let left = reading_pa.len().saturating_sub(burst.end);
+    let after = Level::of(&reading_pa[reading_pa.len() - left / 2..]);
+    let drift_pa = match (before, after) {
+        (Some(b), Some(a)) if (a.pa - b.pa).abs() > SEEN * a.u_pa.hypot(b.u_pa) => a.pa - b.pa,
+        _ => 0.0,
+    };
+    Rest { before, drift_pa }
 }
 
 /// What the figures need to know of thrust.
@@ -66,18 +151,218 @@ pub(super) struct Thrust<'a> {
     pub curve: &'a Curve,
     pub burn: &'a Ends,
     pub action: &'a Ends,
+    pub total_impulse: f64,
     /// Total impulse over burn impulse.
     pub beyond_burn: f64,
 }
 
-/// Reads the pressure channel, where there is one.
+/// Reads the pressure channel, where there is one. What was found and assumed goes to `findings`.
 ///
 /// # Errors
 /// More than one pressure channel; a column that is not there; readings that the calibration cannot invert.
-pub(super) fn measure(record: &Record<'_>, zero: &Zero, thrust: &Thrust<'_>) -> Result<Option<Pressure>, Problem> {
+pub(super) fn measure(
+    record: &Record<'_>,
+    zero: &Zero,
+    thrust: &Thrust<'_>,
+    findings: &mut Vec<String>,
+) -> Result<Option<Pressure>, Problem> {
     let run = &record.inputs.run;
-    let mut channels =
-        run.channels.iter().zip(&record.inputs.calibrations).filter(|(spec, _)| spec.role == Role::Pressure);
+    let Some((reading_pa, calibration, column, absolute)) = readings(record, zero)? else { return Ok(None) };
+    let time_s = &record.time_s[zero.window.clone()];
+    let burst = zero.burst.start - zero.window.start..zero.burst.end - zero.window.start;
+    let rest = rest(&reading_pa, burst.clone());
+    let (outside_pa, outside_limits, words) = outside(record);
+    let noise = rest.before.map_or(0.0, |l| l.sample_pa);
+    // Slow noise sums up to more over a stretch than white noise of the same size.
+    let slow = rest.before.map_or(1.0, |l| {
+        let white = l.sample_pa / (burst.start as f64).sqrt();
+        if white > 0.0 { l.u_pa / white } else { 1.0 }
+    });
+    let level = rest.before.map_or(if absolute { outside_pa } else { 0.0 }, |l| l.pa);
+    if rest.before.is_none() {
+        findings.push(
+            "no quiet record before the burst: the zero of the pressure was not seen, so no uncertainty is given for its figures"
+                .into(),
+        );
+    }
+    let scale_u = calibration.force_uncertainty_n(level).unwrap_or(0.0);
+    let mut zero_limits = 0.0;
+    // What is above the outside air pushes; an absolute reading keeps its own scale.
+    let shift = if absolute {
+        let off = level - outside_pa;
+        if off.abs() > outside_limits + 2.0 * (scale_u + rest.before.map_or(0.0, |l| l.u_pa)) {
+            zero_limits = off.abs();
+            findings.push(format!(
+                "pressure before ignition reads {:.0} hPa, where the air has {:.0} hPa ({words}): the transducer's zero may be off by that, and its figures are that much more uncertain; is it a gauge one?",
+                level / 100.0,
+                outside_pa / 100.0
+            ));
+        }
+        outside_pa
+    } else {
+        findings
+            .push(format!("{words}; added to the gauge pressure, whose zero ({level:.0} Pa) is read before ignition"));
+        level
+    };
+    if rest.drift_pa != 0.0 {
+        findings.push(format!(
+            "the zero of the pressure moves by {:+.0} Pa across the burst: taken away evenly along it",
+            rest.drift_pa
+        ));
+    }
+    let (starts, ends) = (record.time_s[zero.burst.start], record.time_s[zero.burst.end - 1]);
+    let drift = |t: f64| rest.drift_pa * ((t - starts) / (ends - starts).max(f64::MIN_POSITIVE)).clamp(0.0, 1.0);
+    let above: Vec<f64> = reading_pa.iter().zip(time_s).map(|(p, t)| p - shift - drift(*t)).collect();
+    let burst_s = thrust.curve.burst_s;
+    let smooth = conditioned::condition(
+        time_s,
+        &above,
+        record.interval_s(),
+        noise,
+        record.time_s[record.burn.end - 1] - record.time_s[record.burn.start],
+        run.reduction.lowpass,
+        None,
+    );
+    let last = smooth.time_s.partition_point(|t| *t <= burst_s[1]);
+    let first = smooth.time_s.partition_point(|t| *t < burst_s[0]).min(last.saturating_sub(1));
+    let peak = smooth.peak(first..last, record.averaged_cells());
+    let Some(mut peak) = peak.filter(|p| p.thrust_n > ABOVE_NOISE * noise && p.thrust_n > 0.0) else {
+        findings.push(
+            "the pressure does not rise during the burn: no figures from it. Look at the transducer, its column and its sign"
+                .into(),
+        );
+        return Ok(None);
+    };
+    let clipped = clipping::find_clipping(&column.values)
+        .iter()
+        .flat_map(|c| c.ranges.iter())
+        .any(|r| r.start < record.burn.end && r.end > record.burn.start);
+    if clipped {
+        // Nothing is known above the cut: the highest reading is what was measured.
+        peak.thrust_n = peak.highest_n;
+        findings.push(
+            "the pressure is cut off at a limit during the burn: peak, mean and characteristic velocity are lower bounds, the thrust coefficient an upper one"
+                .into(),
+        );
+    }
+    let thrust_clipped = !super::figures::clipped_in_burn(record).is_empty();
+    let (from, to) = (thrust.action.start.time_s, thrust.action.end.time_s);
+    let (burn_from, burn_to) = (thrust.burn.start.time_s, thrust.burn.end.time_s);
+    let over_action = |y: &[f64]| integral::between(time_s, y, from, to);
+    // Beyond a record that ends early the pressure is taken to fall as the extrapolated thrust does.
+    let beyond_burn = if thrust.burn.end_extrapolated {
+        thrust.total_impulse / integral::between(time_s, &zero.thrust_n, burn_from, burn_to)
+    } else {
+        thrust.beyond_burn
+    };
+    let over_burn = |y: &[f64]| integral::between(time_s, y, burn_from, burn_to) * beyond_burn;
+    let action_integral_pa_s = over_action(&above) + outside_pa * (to - from);
+    let total_integral_pa_s = over_burn(&above) + outside_pa * (burn_to - burn_from) * thrust.beyond_burn;
+
+    let mut effects = Vec::new();
+    for direction in calibration.errors.iter().flatten() {
+        let error = |p: f64| calibration.force_error_n(direction, p);
+        let at_rest = if absolute { 0.0 } else { error(level) };
+        let change: Vec<f64> = reading_pa.iter().map(|p| error(*p) - at_rest).collect();
+        effects.push(Effect {
+            peak_pressure: error(peak.thrust_n + shift) - at_rest,
+            pressure_action: over_action(&change),
+            pressure_total: over_burn(&change),
+            ..Effect::of("pressure scale").shaped(match direction.shape {
+                ErrorShape::Relative(_) => Shape::Rectangular,
+                _ => Shape::Normal,
+            })
+        });
+    }
+    // `course`: of an error of the level along the burst, as a share.
+    let level_effect = |source: &str, u: f64, shape: Shape, course: &dyn Fn(f64) -> f64| {
+        let change: Vec<f64> = time_s.iter().map(|t| u * course(*t)).collect();
+        Effect {
+            peak_pressure: u * course(peak.time_s),
+            pressure_action: over_action(&change),
+            pressure_total: over_burn(&change),
+            ..Effect::of(source).shaped(shape)
+        }
+    };
+    let even = |_: f64| 1.0;
+    if absolute {
+        effects.push(level_effect("zero of the pressure", zero_limits / 3f64.sqrt(), Shape::Rectangular, &even));
+    } else {
+        let level_u = rest.before.map_or(0.0, |l| l.u_pa);
+        effects.push(level_effect("air pressure", outside_limits / 3f64.sqrt(), Shape::Rectangular, &even));
+        effects.push(level_effect("zero of the pressure", level_u, Shape::Normal, &even));
+    }
+    // Between a step at the start and one at the end.
+    let course_u = 0.5 * rest.drift_pa.abs() / 3f64.sqrt();
+    effects.push(level_effect("course of the pressure's zero", course_u, Shape::Rectangular, &even));
+    let sums = |span: f64| slow * noise * (span * record.interval_s()).sqrt();
+    effects.push(Effect { peak_pressure: peak.noise_u_n, ..Effect::of("noise at the highest pressure") });
+    effects.push(Effect {
+        pressure_action: sums(to - from),
+        pressure_total: sums(burn_to - burn_from),
+        ..Effect::of("noise of the pressure")
+    });
+    // What burns outside the burn time is taken to flow as it pushes; how far that holds nobody measured.
+    let outside_burn = (beyond_burn - 1.0).max(0.0) * total_integral_pa_s;
+    effects.push(Effect {
+        pressure_total: outside_burn / 3f64.sqrt(),
+        ..Effect::of("pressure outside the burn time").shaped(Shape::Rectangular)
+    });
+
+    let throat = throat(record, &mut effects, findings);
+    let web =
+        web(&smooth.time_s[first..last], &smooth.thrust_n[first..last], run.motor.web_thickness_m.is_some(), findings);
+    let mut web_known = false;
+    if let (Some(web), Some(thickness)) = (&web, run.motor.web_thickness_m) {
+        // A knee as sharp as the tangents would have it, or as early before it as the bisector's cut.
+        let u = (web.knee_s - web.end_s).abs().hypot(record.interval_s()) / 3f64.sqrt();
+        effects.push(Effect { web_time: u, ..Effect::of("end of the web").shaped(Shape::Rectangular) });
+        web_known = thickness.standard_uncertainty.is_some();
+        match thickness.standard_uncertainty {
+            Some(u) => {
+                effects.push(Effect { web_thickness: u, ..Effect::of("web thickness").shaped(stated(&thickness)) })
+            }
+            None => findings.push("no limits are given for the web thickness: no uncertainty of the burn rate".into()),
+        }
+    }
+    if !clipped && !thrust_clipped {
+        findings.extend(steady::words(&Course {
+            time_s,
+            thrust_n: &zero.thrust_n,
+            above_pa: &above,
+            outside_pa,
+            action_s: [from, to],
+            throat_area_m2: throat.map(|t| t.area_m2),
+            growth: throat.map_or(0.0, |t| t.growth),
+        }));
+    }
+    let curve_pa = time_s.iter().map(|t| super::curve::at(&smooth.time_s, &smooth.thrust_n, *t) + outside_pa).collect();
+    Ok(Some(Pressure {
+        curve_pa,
+        air_pa: outside_pa,
+        peak_pa: peak.thrust_n + outside_pa,
+        peak_noise_pa: peak.noise_u_n,
+        action_integral_pa_s,
+        total_integral_pa_s,
+        throat_area_m2: throat.map(|t| t.area_m2),
+        web_s: web.map(|w| w.end_s - w.start_s),
+        effects,
+        known: calibration.errors.is_some() && rest.before.is_some(),
+        throat_known: throat.is_some_and(|t| t.known),
+        web_known,
+        clipped,
+        thrust_clipped,
+    }))
+}
+
+/// Readings of the pressure channel in Pa on its own scale over the zero's window, what they came from, and whether they are
+/// absolute.
+type Readings<'a> = (Vec<f64>, &'a Calibration, &'a Column, bool);
+
+fn readings<'a>(record: &Record<'a>, zero: &Zero) -> Result<Option<Readings<'a>>, Problem> {
+    let inputs = record.inputs;
+    let run = &inputs.run;
+    let mut channels = run.channels.iter().zip(&inputs.calibrations).filter(|(spec, _)| spec.role == Role::Pressure);
     let Some((spec, calibration)) = channels.next() else { return Ok(None) };
     let in_run = |problem: Problem| match &run.path {
         Some(path) => problem.in_file(path),
@@ -91,167 +376,62 @@ pub(super) fn measure(record: &Record<'_>, zero: &Zero, thrust: &Thrust<'_>) -> 
         ));
     }
     let Some(calibration) = calibration else {
-        return Err(in_run(Problem::new("the pressure channel has no calibration and no unit of pressure")));
+        return Err(in_run(
+            Problem::new("the pressure channel has no calibration and no unit of pressure")
+                .expected("unit = \"bar\" (or Pa, kPa, MPa, psi), or a calibration of the transducer"),
+        ));
     };
-    let column = force::column(record.inputs, &spec.column)?;
-    let mut findings = Vec::new();
-    let window = zero.window.clone();
-    let time_s = &record.time_s[window.clone()];
-    let mut reading_pa = Vec::with_capacity(time_s.len());
-    for value in &column.values[window.clone()] {
+    let column = force::column(inputs, &spec.column)?;
+    let mut reading_pa = Vec::with_capacity(zero.window.len());
+    for value in &column.values[zero.window.clone()] {
         reading_pa.push(calibration.force_n(*value).map_err(|p| p.in_file(&run.log.file))?);
     }
-    let quiet = ..zero.burst.start.saturating_sub(window.start).max(2).min(reading_pa.len());
-    let rest = &reading_pa[quiet];
-    let n = rest.len().max(1) as f64;
-    let level = rest.iter().sum::<f64>() / n;
-    let noise = (rest.iter().map(|p| (p - level).powi(2)).sum::<f64>() / (n - 1.0).max(1.0)).sqrt();
-    let (outside_pa, outside_limits, words) = outside(record);
-    // Pressure above the outside air, whatever the transducer counts from: its own zero is read before ignition.
-    let shift = match spec.reference {
-        Some(PressureReference::Absolute) => {
-            let off = level - outside_pa;
-            if off.abs() > outside_limits.max(3.0 * noise) {
-                findings.push(format!(
-                    "pressure before ignition reads {:.0} hPa, the air outside should have {:.0} hPa: zero of the transducer",
-                    level / 100.0,
-                    outside_pa / 100.0
-                ));
-            }
-            outside_pa
-        }
-        _ => {
-            findings.push(format!("{words}; added to the gauge pressure, whose zero is read before ignition"));
-            level
-        }
-    };
-    let absolute = spec.reference == Some(PressureReference::Absolute);
-    let base_pa = if absolute { 0.0 } else { outside_pa };
-    let above: Vec<f64> = reading_pa.iter().map(|p| p - shift).collect();
-    let burst_s = thrust.curve.burst_s;
-    let smooth = conditioned::condition(
-        time_s,
-        &above,
-        record.interval_s(),
-        noise,
-        record.time_s[record.burn.end - 1] - record.time_s[record.burn.start],
-        run.reduction.lowpass,
-        None,
-    );
-    let first = smooth.time_s.partition_point(|t| *t < burst_s[0]);
-    let last = smooth.time_s.partition_point(|t| *t <= burst_s[1]).min(smooth.time_s.len());
-    let Some(peak) = smooth.peak(first..last.max(first + 1), record.averaged_cells()) else { return Ok(None) };
-    // To absolute: gauge above the air, absolute by its own scale.
-    let lift = if absolute { shift } else { base_pa };
-    let (from, to) = (thrust.action.start.time_s, thrust.action.end.time_s);
-    let (burn_from, burn_to) = (thrust.burn.start.time_s, thrust.burn.end.time_s);
-    let action_above = integral::between(time_s, &above, from, to);
-    let burn_above = integral::between(time_s, &above, burn_from, burn_to);
-    let action_integral_pa_s = action_above + lift * (to - from);
-    let total_integral_pa_s = (burn_above + lift * (burn_to - burn_from)) * thrust.beyond_burn;
+    Ok(Some((reading_pa, calibration, column, spec.reference == Some(PressureReference::Absolute))))
+}
 
-    let mut effects = Vec::new();
-    let mut known = true;
-    match &calibration.errors {
-        Some(errors) => {
-            for direction in errors {
-                let error = |p: f64| calibration.force_error_n(direction, p);
-                let at_rest = if absolute { 0.0 } else { error(level) };
-                let change: Vec<f64> = reading_pa.iter().map(|p| error(*p) - at_rest).collect();
-                effects.push(Effect {
-                    peak_pressure: error(peak.thrust_n + shift) - at_rest,
-                    pressure_action: integral::between(time_s, &change, from, to),
-                    pressure_total: integral::between(time_s, &change, burn_from, burn_to) * thrust.beyond_burn,
-                    ..Effect::of("pressure scale").shaped(match direction.shape {
-                        crate::calibration::ErrorShape::Relative(_) => Shape::Rectangular,
-                        _ => Shape::Normal,
-                    })
-                });
-            }
-        }
-        None => known = false,
-    }
-    let level_everywhere = |source: &str, u: f64, shape: Shape| Effect {
-        peak_pressure: u,
-        pressure_action: u * (to - from),
-        pressure_total: u * (burn_to - burn_from) * thrust.beyond_burn,
-        ..Effect::of(source).shaped(shape)
-    };
-    if !absolute {
-        effects.push(level_everywhere("air pressure", outside_limits / 3f64.sqrt(), Shape::Rectangular));
-        effects.push(level_everywhere("zero of the pressure", noise / n.sqrt(), Shape::Normal));
-    }
-    let sums = |span: f64| noise * (span * record.interval_s()).sqrt();
-    effects.push(Effect { peak_pressure: peak.noise_u_n, ..Effect::of("noise at the highest pressure") });
-    effects.push(Effect {
-        pressure_action: sums(to - from),
-        pressure_total: sums(burn_to - burn_from),
-        ..Effect::of("noise of the pressure")
-    });
-    // What burns outside the burn time is taken to flow as it pushes; how far that holds nobody measured.
-    let outside_burn = (thrust.beyond_burn - 1.0).max(0.0) * total_integral_pa_s;
-    effects.push(Effect {
-        pressure_total: outside_burn / 3f64.sqrt(),
-        ..Effect::of("pressure outside the burn time").shaped(Shape::Rectangular)
-    });
+fn stated(measured: &Measured) -> Shape {
+    if measured.limits.is_some() { Shape::Rectangular } else { Shape::Normal }
+}
 
-    let motor = &run.motor;
-    let throat_area_m2 = motor.throat_diameter_m.map(|d| {
-        let (area, wear) = pressure::throat_area(d.value, motor.throat_diameter_after_m.map(|d| d.value));
-        for diameter in [motor.throat_diameter_m, motor.throat_diameter_after_m].into_iter().flatten() {
-            let share = if motor.throat_diameter_after_m.is_some() { 0.5 } else { 1.0 };
-            if let Some(u) = diameter.standard_uncertainty {
-                let shape = if diameter.limits.is_some() { Shape::Rectangular } else { Shape::Normal };
-                effects.push(Effect {
-                    throat_area: share * 0.5 * std::f64::consts::PI * diameter.value * u,
-                    ..Effect::of("throat diameter").shaped(shape)
-                });
-            } else {
-                findings.push("no limits are given for a throat diameter: its error is not counted".into());
-            }
-        }
-        if wear > 0.0 {
-            findings.push(format!(
-                "the throat grew by {:.1} % in area: the mean is used, and when in the burn it grew counts as uncertain",
-                100.0 * 2.0 * wear / (area - wear)
-            ));
-            effects.push(Effect { throat_area: wear / 3f64.sqrt(), ..Effect::of("wear of the throat").shaped(Shape::Rectangular) });
-        }
-        area
-    });
-    let web = web(&smooth, motor.web_thickness_m.is_some(), &mut findings);
-    if let (Some(web), Some(thickness)) = (&web, motor.web_thickness_m) {
-        // A knee as sharp as the tangents would have it, or as early before it as the bisector's cut.
-        let u = (web.knee_s - web.end_s).abs().hypot(record.interval_s()) / 3f64.sqrt();
-        effects.push(Effect { web_time: u, ..Effect::of("end of the web") });
-        match thickness.standard_uncertainty {
-            Some(u) => {
-                effects.push(Effect { web_thickness: u, ..Effect::of("web thickness").shaped(Shape::Rectangular) })
-            }
-            None => findings.push("no limits are given for the web thickness: its error is not counted".into()),
-        }
+/// The throat: its mean area, whether its error is known, and its growth in area as a share.
+#[derive(Debug, Clone, Copy)]
+struct Throat {
+    area_m2: f64,
+    known: bool,
+    growth: f64,
+}
+
+fn throat(record: &Record<'_>, effects: &mut Vec<Effect>, findings: &mut Vec<String>) -> Option<Throat> {
+    let motor = &record.inputs.run.motor;
+    let before = motor.throat_diameter_m?;
+    let (area_m2, wear) = pressure::throat_area(before.value, motor.throat_diameter_after_m.map(|d| d.value));
+    let diameters = [Some(before), motor.throat_diameter_after_m];
+    let given: Vec<Measured> = diameters.into_iter().flatten().collect();
+    let known = given.iter().all(|d| d.standard_uncertainty.is_some());
+    if known {
+        // One caliper measures both: its error is taken as the same, so that the two do not average out.
+        let area_u = given.iter().map(|d| 0.5 * std::f64::consts::PI * d.value * d.standard_uncertainty.unwrap_or(0.0));
+        effects.push(Effect {
+            throat_area: area_u.sum::<f64>() / given.len() as f64,
+            ..Effect::of("throat diameter").shaped(stated(&before))
+        });
+    } else {
+        findings.push(
+            "no limits are given for a throat diameter: no uncertainty of characteristic velocity and thrust coefficient".into(),
+        );
     }
-    findings.extend(steadiness(record, zero, &above, from, to, throat_area_m2));
-    let clipped = clipping::find_clipping(&column.values)
-        .iter()
-        .flat_map(|c| c.ranges.iter())
-        .any(|r| r.start < record.burn.end && r.end > record.burn.start);
-    if clipped {
-        findings.push("the pressure is cut off at a limit during the burn: its figures are lower bounds".into());
+    let growth = motor.throat_diameter_after_m.map_or(0.0, |after| (after.value / before.value).powi(2) - 1.0);
+    if wear > 0.0 {
+        findings.push(format!(
+            "the throat changed by {:+.1} % in area: the mean is used, and when in the burn it changed counts as uncertain",
+            100.0 * growth
+        ));
+        effects.push(Effect {
+            throat_area: wear / 3f64.sqrt(),
+            ..Effect::of("wear of the throat").shaped(Shape::Rectangular)
+        });
     }
-    let curve_pa = time_s.iter().map(|t| super::curve::at(&smooth.time_s, &smooth.thrust_n, *t) + lift).collect();
-    Ok(Some(Pressure {
-        curve_pa,
-        peak_pa: peak.thrust_n + lift,
-        action_integral_pa_s,
-        total_integral_pa_s,
-        throat_area_m2,
-        web_s: web.map(|w| w.end_s - w.start_s),
-        effects,
-        known,
-        clipped,
-        findings,
-    }))
+    Some(Throat { area_m2, known, growth })
 }
 
 /// Makes a figure of its key, value, unit, effects, and whether its scale is known.
@@ -290,36 +470,45 @@ impl Pressure {
                 let shares = e.throat_area / area + e.pressure_total / a.pressure_total - e.propellant_mass / kg;
                 c * (shares + clock(e))
             };
-            q.characteristic_velocity = Some(figure("characteristic_velocity", c, "m/s", &effect, self.known && known));
+            let all_known = self.known && self.throat_known && known;
+            q.characteristic_velocity = Some(figure("characteristic_velocity", c, "m/s", &effect, all_known));
         }
-        if let Some(area) = self.throat_area_m2 {
+        // With both cut off, nothing is known of their quotient.
+        if let Some(area) = self.throat_area_m2.filter(|_| !(self.clipped && self.thrust_clipped)) {
             let c = pressure::thrust_coefficient(a.action_impulse, area, a.pressure_action);
             let effect = |e: &Effect| {
                 let impulse = if clock(e) == 0.0 { e.action_impulse / a.action_impulse } else { 0.0 };
                 c * (impulse - e.throat_area / area - e.pressure_action / a.pressure_action)
             };
-            q.thrust_coefficient = Some(figure("thrust_coefficient", c, "1", &effect, self.known && thrust_known));
+            let all_known = self.known && self.throat_known && thrust_known;
+            q.thrust_coefficient = Some(figure("thrust_coefficient", c, "1", &effect, all_known));
         }
         if let (Some(web), Some(time)) = (web_thickness_m, self.web_s) {
             let rate = web / time;
             let effect = |e: &Effect| rate * (e.web_thickness / web - e.web_time / time - clock(e));
-            q.burn_rate = Some(figure("burn_rate", rate, "m/s", &effect, true));
+            q.burn_rate = Some(figure("burn_rate", rate, "m/s", &effect, self.web_known));
         }
-        if self.clipped {
-            for figure in
-                [&mut q.peak_pressure, &mut q.mean_pressure, &mut q.characteristic_velocity].into_iter().flatten()
-            {
-                figure.bound = Some("lower".to_string());
+        let bound = |figure: &mut Option<Figure>, side: &str| {
+            if let Some(figure) = figure {
+                figure.bound = Some(side.to_string());
             }
+        };
+        if self.clipped {
+            bound(&mut q.peak_pressure, "lower");
+            bound(&mut q.mean_pressure, "lower");
+            bound(&mut q.characteristic_velocity, "lower");
+            bound(&mut q.thrust_coefficient, "upper");
+        } else if self.thrust_clipped {
+            bound(&mut q.thrust_coefficient, "lower");
         }
     }
 }
 
-fn web(smooth: &conditioned::Conditioned, wanted: bool, findings: &mut Vec<String>) -> Option<WebTime> {
+fn web(time_s: &[f64], above_pa: &[f64], wanted: bool, findings: &mut Vec<String>) -> Option<WebTime> {
     if !wanted {
         return None;
     }
-    let web = pressure::web_time(&smooth.time_s, &smooth.thrust_n);
+    let web = pressure::web_time(time_s, above_pa);
     match &web {
         Some(web) => findings.push(format!(
             "web burning time {:.3} s: from 10 % of the highest pressure to the aft-tangent bisector, on axes scaled by the time from 10 % to 10 % and by the highest pressure; the tangents meet {:.3} s later",
@@ -329,36 +518,4 @@ fn web(smooth: &conditioned::Conditioned, wanted: bool, findings: &mut Vec<Strin
         None => findings.push("no knee in the pressure's tail-off: no burn rate".into()),
     }
     web
-}
-
-/// Thrust over pressure in the first and the second half of the action time.
-fn steadiness(
-    record: &Record<'_>,
-    zero: &Zero,
-    above: &[f64],
-    from: f64,
-    to: f64,
-    area: Option<f64>,
-) -> Option<String> {
-    let time_s = &record.time_s[zero.window.clone()];
-    let middle = 0.5 * (from + to);
-    let ratio =
-        |a: f64, b: f64| integral::between(time_s, &zero.thrust_n, a, b) / integral::between(time_s, above, a, b);
-    let (early, late) = (ratio(from, middle), ratio(middle, to));
-    let change = late / early - 1.0;
-    if !change.is_finite() {
-        return None;
-    }
-    let words = if change.abs() < STEADY {
-        "steady: nozzle and cell agree with the pressure through the burn".to_string()
-    } else {
-        "not steady: the throat wore, the nozzle went, or cell or transducer drifted".to_string()
-    };
-    let size = area.map_or(String::new(), |a| {
-        format!(" ({:.3} and {:.3} of the throat area times gauge pressure)", early / a, late / a)
-    });
-    Some(format!(
-        "thrust over pressure changes by {:+.1} % from the first to the second half of the action time{size}, {words}",
-        100.0 * change
-    ))
 }

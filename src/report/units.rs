@@ -120,6 +120,7 @@ pub fn words(figure: &Figure, units: Units) -> Words {
     };
     let bound = match figure.bound.as_deref() {
         Some("lower") => "≥ ",
+        Some("upper") => "≤ ",
         Some(_) => "bound ",
         None => "",
     };

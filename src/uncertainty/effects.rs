@@ -254,6 +254,7 @@ impl Budgets {
             }),
             bound: None,
             source: None,
+            estimate: None,
         }
     }
 }

@@ -90,6 +90,8 @@ pub struct Extra<'a> {
     pub unit: &'static str,
     pub decimals: usize,
     pub noise: f64,
+    /// Values end there.
+    pub limit: Option<f64>,
     pub value: Box<dyn Fn(f64) -> f64 + 'a>,
 }
 
@@ -222,6 +224,7 @@ impl Logger {
             for extra in extras {
                 let noise: f64 = rng.sample(StandardNormal);
                 let value = (extra.value)(true_s) + noise * extra.noise;
+                let value = extra.limit.map_or(value, |limit| value.min(limit));
                 line.push(delimiter);
                 line.push_str(&self.comma(format!("{value:.*}", extra.decimals)));
             }

@@ -17,7 +17,7 @@ pub mod text;
 
 use cell::{Cell, Scale};
 use logger::{Extra, LogTruth, Logger, TimeStyle};
-use motor::Motor;
+use motor::{Dense, Motor};
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 use stand::{CellForce, Stand};
@@ -27,7 +27,8 @@ use std::path::{Path, PathBuf};
 /// m/s2, exact by definition of the standard acceleration (3rd CGPM, 1901).
 pub const STANDARD_GRAVITY: f64 = 9.80665;
 
-/// A chamber-pressure channel. Absolute pressure = air + thrust / (thrust coefficient x throat area).
+/// A chamber-pressure channel. Absolute pressure = air + thrust / (thrust coefficient x throat area); a throat that wears grows in
+/// area evenly through the burn.
 #[derive(Debug, Clone, PartialEq)]
 pub struct PressureChannel {
     /// Unit of the log with its size in Pa.
@@ -41,6 +42,69 @@ pub struct PressureChannel {
     /// As written into run.toml.
     pub accuracy: &'static str,
     pub web_thickness_m: Option<f64>,
+    /// After the burn, where the throat wore.
+    pub throat_after_m: Option<f64>,
+    /// Limits of both diameters and of the web, as run.toml states them.
+    pub throat_limits_m: Option<f64>,
+    pub web_limits_m: Option<f64>,
+    /// What is written into run.toml less what is true, the same for both diameters.
+    pub throat_error_m: f64,
+    pub web_error_m: f64,
+    /// Hidden errors of the transducer: share of the reading (of absolute pressure for an absolute one), and its zero, Pa.
+    pub scale_error: f64,
+    pub zero_pa: f64,
+    /// Readings end there, in the log's unit.
+    pub limit: Option<f64>,
+    /// From this share of the burn on the nozzle gives this part of the thrust coefficient.
+    pub nozzle_lost: Option<(f64, f64)>,
+}
+
+impl Default for PressureChannel {
+    fn default() -> Self {
+        PressureChannel {
+            unit: "bar",
+            unit_pa: 1e5,
+            gauge: true,
+            thrust_coefficient: 1.5,
+            throat_diameter_m: 0.0095,
+            air_pressure_pa: 100_000.0,
+            noise_pa: 8e3,
+            accuracy: "0.5 %",
+            web_thickness_m: None,
+            throat_after_m: None,
+            throat_limits_m: Some(2e-5),
+            web_limits_m: Some(5e-5),
+            throat_error_m: 0.0,
+            web_error_m: 0.0,
+            scale_error: 0.0,
+            zero_pa: 0.0,
+            limit: None,
+            nozzle_lost: None,
+        }
+    }
+}
+
+impl PressureChannel {
+    fn area(diameter_m: f64) -> f64 {
+        0.25 * std::f64::consts::PI * diameter_m * diameter_m
+    }
+
+    /// Throat area, m², at a share of the burn.
+    fn throat_area(&self, share: f64) -> f64 {
+        let (before, after) =
+            (Self::area(self.throat_diameter_m), Self::area(self.throat_after_m.unwrap_or(self.throat_diameter_m)));
+        before + (after - before) * share.clamp(0.0, 1.0)
+    }
+
+    /// Pressure above the air, Pa, that gives this thrust; the burn runs from `from_s` to `to_s`.
+    fn above(&self, thrust: &Dense, from_s: f64, to_s: f64) -> Dense {
+        let pressure = |(i, f): (usize, &f64)| {
+            let share = (thrust.start_s + i as f64 * motor::STEP_S - from_s) / (to_s - from_s);
+            let nozzle = self.nozzle_lost.map_or(1.0, |(at, part)| if share > at { part } else { 1.0 });
+            f / (self.thrust_coefficient * nozzle * self.throat_area(share))
+        };
+        Dense::new(thrust.start_s, thrust.values.iter().enumerate().map(pressure).collect())
+    }
 }
 
 /// A known weight on the stand before the firing: kg, from and to in true time.
@@ -142,11 +206,14 @@ pub struct Truth {
     pub peak_pressure_pa: Option<f64>,
     /// Absolute, over the action time.
     pub mean_pressure_pa: Option<f64>,
-    /// Throat area times the integral of absolute pressure over the burn time, raised by the share of the impulse outside it, over
-    /// the propellant's mass.
+    /// Integral of throat area times absolute pressure over the burn time, raised by the share of the impulse outside it, over the
+    /// propellant's mass.
     pub characteristic_velocity_m_s: Option<f64>,
     /// Over the action time, absolute pressure.
     pub thrust_coefficient: Option<f64>,
+    /// From 10 % of the highest pressure to where the tail begins.
+    pub web_time_s: Option<f64>,
+    pub burn_rate_m_s: Option<f64>,
     /// First and last thrust above 0.05 % of peak.
     pub thrust_start_s: f64,
     pub thrust_end_s: f64,
@@ -197,17 +264,22 @@ impl Scenario {
             None => thrust_over_s + self.after_s,
         };
 
-        let air = self.pressure.as_ref().map(|p| (p, p.thrust_coefficient * throat_area(p)));
+        let (up5, down5) = crossings(0.05);
+        let chamber = self.pressure.as_ref().map(|p| (p, p.above(&curve.all, up5, down5)));
+        let window_s = self.logger.averaging_s / (1.0 + self.logger.clock_error);
         let mut extras = Vec::new();
-        if let Some((p, area)) = air {
-            let thrust = &curve.all;
+        if let Some((p, above)) = &chamber {
             let zero = if p.gauge { 0.0 } else { p.air_pressure_pa };
             extras.push(Extra {
                 name: "chamber",
                 unit: p.unit,
                 decimals: 4,
                 noise: p.noise_pa / p.unit_pa,
-                value: Box::new(move |t| (zero + thrust.at(t - self.before_s) / area) / p.unit_pa),
+                limit: p.limit,
+                value: Box::new(move |t| {
+                    let true_pa = zero + above.mean_before(t - self.before_s, window_s);
+                    (true_pa * (1.0 + p.scale_error) + p.zero_pa) / p.unit_pa
+                }),
             });
         }
         let burn_from_s = self.before_s + smooth.start_s;
@@ -218,6 +290,7 @@ impl Scenario {
                 unit: "V",
                 decimals: 2,
                 noise: 0.01,
+                limit: None,
                 value: Box::new(move |t| if t >= signal_s && t < signal_s + 0.8 { 11.6 } else { 0.0 }),
             });
         }
@@ -229,7 +302,6 @@ impl Scenario {
         let (bytes, log) = self.logger.write(&self.cell, end_s, self.seed, &force_at, &extras);
         drop(extras);
 
-        let (up5, down5) = crossings(0.05);
         let (up10, down10) = crossings(0.10);
         let (up90, _) = crossings(0.90);
         let (first, last) = crossings(0.0005);
@@ -238,6 +310,9 @@ impl Scenario {
         let burn_impulse = burn.integral_to(down5) - burn.integral_to(up5);
         let initial_s = (down5 - up5).min(0.5);
         let action = burn.integral_to(down10) - burn.integral_to(up10);
+        let chamber = self.pressure.as_ref().map(|p| Chamber::of(p, smooth, burn, [up5, down5], [up10, down10]));
+        let tail_from_s = smooth.start_s + self.motor.body_s;
+        let web_time_s = chamber.as_ref().map(|c| tail_from_s - c.rises_s);
         let truth = Truth {
             total_impulse_n_s: total,
             burn_impulse_n_s: burn_impulse,
@@ -251,14 +326,14 @@ impl Scenario {
             propellant_mass_kg: self.motor.propellant_mass_kg,
             specific_impulse_s: total / (self.motor.propellant_mass_kg * STANDARD_GRAVITY),
             expelled_mass_kg: self.expelled_extra_kg.map(|extra| self.motor.propellant_mass_kg + extra),
-            peak_pressure_pa: air.map(|(p, area)| p.air_pressure_pa + peak / area),
-            mean_pressure_pa: air.map(|(p, area)| p.air_pressure_pa + action / area / (down10 - up10)),
-            characteristic_velocity_m_s: air.map(|(p, area)| {
-                let integral = p.air_pressure_pa * (down5 - up5) + burn_impulse / area;
-                throat_area(p) * integral * (total / burn_impulse) / self.motor.propellant_mass_kg
-            }),
-            thrust_coefficient: air
-                .map(|(p, area)| action / (throat_area(p) * (p.air_pressure_pa * (down10 - up10) + action / area))),
+            peak_pressure_pa: chamber.as_ref().map(|c| c.peak_pa),
+            mean_pressure_pa: chamber.as_ref().map(|c| c.action_pa_s / (down10 - up10)),
+            characteristic_velocity_m_s: chamber
+                .as_ref()
+                .map(|c| c.burn_n_s * (total / burn_impulse) / self.motor.propellant_mass_kg),
+            thrust_coefficient: chamber.as_ref().map(|c| action / c.action_n_s),
+            web_time_s,
+            burn_rate_m_s: self.pressure.as_ref().and_then(|p| Some(p.web_thickness_m? / web_time_s?)),
             thrust_start_s: log_time(first),
             thrust_end_s: log_time(last),
             start_s: log_time(up5),
@@ -365,9 +440,17 @@ impl Scenario {
             motor.push(format!("mass_before = \"{before} ± {limits} g\"\nmass_after = \"{after} ± {limits} g\""));
         }
         if let Some(p) = &self.pressure {
-            motor.push(format!("throat_diameter = \"{} mm\"", number(p.throat_diameter_m * 1e3)));
+            let length = |true_m: f64, error_m: f64, limits_m: Option<f64>| {
+                let limits = limits_m.map_or(String::new(), |l| format!(" ± {}", number(l * 1e3)));
+                format!("\"{}{limits} mm\"", number((true_m + error_m) * 1e3))
+            };
+            let throat = |true_m: f64| length(true_m, p.throat_error_m, p.throat_limits_m);
+            motor.push(format!("throat_diameter = {}", throat(p.throat_diameter_m)));
+            if let Some(after) = p.throat_after_m {
+                motor.push(format!("throat_diameter_after = {}", throat(after)));
+            }
             if let Some(web) = p.web_thickness_m {
-                motor.push(format!("web_thickness = \"{} mm\"", number(web * 1e3)));
+                motor.push(format!("web_thickness = {}", length(web, p.web_error_m, p.web_limits_m)));
             }
         }
         if !motor.is_empty() {
@@ -395,6 +478,36 @@ impl Scenario {
     }
 }
 
-fn throat_area(p: &PressureChannel) -> f64 {
-    0.25 * std::f64::consts::PI * p.throat_diameter_m * p.throat_diameter_m
+/// What is true of the chamber. Times since the first sign of life.
+struct Chamber {
+    peak_pa: f64,
+    action_pa_s: f64,
+    /// Integrals of throat area times absolute pressure over the action and the burn time.
+    action_n_s: f64,
+    burn_n_s: f64,
+    /// First crossing of 10 % of the highest pressure above the air.
+    rises_s: f64,
+}
+
+impl Chamber {
+    fn of(p: &PressureChannel, smooth: &Dense, burn: &Dense, within_5: [f64; 2], within_10: [f64; 2]) -> Chamber {
+        let [from_s, to_s] = within_5;
+        let above = p.above(burn, from_s, to_s);
+        let shape = p.above(smooth, from_s, to_s);
+        let highest = shape.peak().1;
+        let values = above.values.iter().enumerate();
+        let weighed = values.map(|(i, pressure)| {
+            let share = (above.start_s + i as f64 * motor::STEP_S - from_s) / (to_s - from_s);
+            p.throat_area(share) * (p.air_pressure_pa + pressure)
+        });
+        let weighed = Dense::new(above.start_s, weighed.collect());
+        let over = |dense: &Dense, [a, b]: [f64; 2]| dense.integral_to(b) - dense.integral_to(a);
+        Chamber {
+            peak_pa: p.air_pressure_pa + highest,
+            action_pa_s: over(&above, within_10) + p.air_pressure_pa * (within_10[1] - within_10[0]),
+            action_n_s: over(&weighed, within_10),
+            burn_n_s: over(&weighed, within_5),
+            rises_s: shape.first_above(0.1 * highest).unwrap_or(f64::NAN),
+        }
+    }
 }

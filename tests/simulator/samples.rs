@@ -235,6 +235,7 @@ pub fn firings() -> Vec<Scenario> {
         noise_pa: 9e3,
         accuracy: "0.5 %",
         web_thickness_m: Some(0.0095),
+        ..PressureChannel::default()
     });
     bw2_1.logger.text.units_row = super::text::UnitsRow::AfterHeader;
 
@@ -253,6 +254,7 @@ pub fn firings() -> Vec<Scenario> {
         noise_pa: 9e3,
         accuracy: "0.5 %",
         web_thickness_m: None,
+        ..PressureChannel::default()
     });
     bw2_3.conditions = vec![("air_pressure".into(), "\"1009 hPa\"".into())];
 
