@@ -114,16 +114,31 @@ fn every_command_runs_and_prints_what_is_shown() {
 #[test]
 fn every_toml_example_loads() {
     let dir = workplace();
-    let mut log = String::from("t_ms,load\n");
+    let mut log = String::from("t_ms,load,chamber\n");
     for i in 0..4000 {
         let t = f64::from(i) * 2.0;
         let thrust = if (3000.0..5000.0).contains(&t) { 200.0 } else { 0.0 };
-        log.push_str(&format!("{t},{}\n", thrust + 0.3 * (f64::from(i) * 1.7).sin()));
+        let ripple = 0.3 * (f64::from(i) * 1.7).sin();
+        log.push_str(&format!("{t},{},{}\n", thrust + ripple, 0.1 * (thrust + ripple)));
     }
     std::fs::write(dir.path().join("fm-07.csv"), log).expect("log");
-    let (mut runs, mut cells) = (0, 0);
+    let (mut runs, mut cells, mut parts) = (0, 0, 0);
     for block in blocks(&readme()).iter().filter(|b| b.kind == "toml") {
         let text: String = block.text.lines().map(|l| format!("{}\n", l.trim_start())).collect();
+        if text.starts_with("[[channel]]") {
+            // A part of a run.toml: with a force channel before it, it is a whole one.
+            let head = "[run]\nid = \"A\"\n[log]\nfile = \"fm-07.csv\"\ntime = { column = \"t_ms\", unit = \"ms\" }\n[[channel]]\nrole = \"force\"\ncolumn = \"load\"\nunit = \"N\"\naccuracy = \"0.2 %\"\n";
+            let path = dir.path().join("part.toml");
+            std::fs::write(&path, format!("{head}{text}")).expect("example");
+            let inputs = burntally::load::load_run(&path).expect("the run loads");
+            let q = burntally::reduce::reduce(&inputs).expect("the run reduces").firing.quantities;
+            // 20 bar above 978 hPa, and 0.2 % of noise.
+            let peak = q.peak_pressure.expect("a peak").value;
+            assert!((peak / 2_097_800.0 - 1.0).abs() < 0.01, "{peak}");
+            assert!(q.thrust_coefficient.is_some_and(|c| c.interval_95.is_some()));
+            parts += 1;
+            continue;
+        }
         let is_run = text.starts_with("[run]");
         let path = dir.path().join(if is_run { "run.toml" } else { "cell.toml" });
         std::fs::write(&path, text).expect("example");
@@ -139,5 +154,5 @@ fn every_toml_example_loads() {
             cells += 1;
         }
     }
-    assert_eq!((runs, cells), (1, 1));
+    assert_eq!((runs, cells, parts), (1, 1, 1));
 }

@@ -60,7 +60,9 @@ fn truth_json(scenario: &Scenario, t: &Truth) -> Value {
         "specific_impulse": n(t.specific_impulse_s),
         "peak_pressure": o(t.peak_pressure_pa),
         "mean_pressure": o(t.mean_pressure_pa),
+        "characteristic_velocity": o(t.characteristic_velocity_m_s),
         "thrust_coefficient": o(t.thrust_coefficient),
+        "burn_rate": o(t.burn_rate_m_s),
         "burn": {
             "thrust_start_s": n(t.thrust_start_s), "start_s": n(t.start_s),
             "end_s": n(t.end_s), "thrust_end_s": n(t.thrust_end_s),

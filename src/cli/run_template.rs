@@ -129,7 +129,7 @@ fn channel_section(text: &mut String, log: Option<&Log>) {
     if let Some(column) = log.and_then(|log| log.columns.iter().find(|column| is_pressure(column))) {
         let unit = column.unit.as_deref().unwrap_or("bar");
         text.push_str(&format!(
-            "\n# [[channel]]\n# role = \"pressure\"\n# column = {}\n# unit = {}\n# reference = \"gauge\"     # or absolute\n",
+            "\n# [[channel]]\n# role = \"pressure\"\n# column = {}\n# unit = {}\n# reference = \"gauge\"     # or absolute\n# accuracy = \"0.5 %\"        # of reading; without it, or a calibration, no ± of pressure can be given\n",
             reference(column),
             quoted(unit)
         ));
@@ -157,14 +157,14 @@ const REST: &str = r#"
 # propellant_mass = "412.3 ± 0.5 g"
 # mass_before = "1402.0 ± 0.5 g"
 # mass_after = "987.5 ± 0.5 g"
-# throat_diameter = "9.5 mm"     # with pressure: characteristic velocity and thrust coefficient
-# throat_diameter_after = "9.7 mm"
-# web_thickness = "11 mm"        # with pressure: burn rate
+# throat_diameter = "9.50 ± 0.02 mm"        # with pressure: characteristic velocity and thrust coefficient
+# throat_diameter_after = "9.70 ± 0.02 mm"  # the mean area is used
+# web_thickness = "11.0 ± 0.1 mm"           # with pressure: burn rate
 
 # [conditions]
 # motor_temperature = "21 degC"
 # air_temperature = "17 degC"
-# air_pressure = "978 hPa"
+# air_pressure = "978 ± 1 hPa"   # added to a gauge pressure
 
 # [tags]                         # any names of your own
 # cure_days = 9

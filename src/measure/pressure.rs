@@ -95,43 +95,149 @@ pub struct WebTime {
     pub end_s: f64,
     /// Where the two tangents meet: how far a sharper knee would lie.
     pub knee_s: f64,
+    /// How far that place moves with the choice of tangents: a bent or a straight level part, the next stretch of the tail-off, s.
+    pub choice_s: f64,
 }
 
-/// Parts of the time to the tail-off over which the level part's tangent is fitted, counted back from the tail-off.
-const LEVEL_FROM: f64 = 0.40;
-const LEVEL_TO: f64 = 0.08;
-/// The tail-off's tangent is fitted between these shares of the level at its beginning.
-const TAIL_SHARES: (f64, f64) = (0.75, 0.35);
+/// Share of the time burnt, back from where the pressure falls for good, over which the level part's tangent is found.
+const LEVEL_FROM: f64 = 0.20;
+const LEVEL_TO: f64 = 0.04;
+/// The pressure falls for good where it is last at this share of the level.
+const FALLEN: f64 = 0.9;
+/// Shares of the level between which the tail-off's tangent may touch: the steepest is taken, which is at the top of a tail that fades
+/// and in the middle of a rounded one.
+const TAIL_SHARES: [(f64, f64); 3] = [(0.92, 0.70), (0.80, 0.50), (0.65, 0.35)];
+/// Shares of the highest value from which the level before the tail-off is sought, since a boost may stand above it.
+const STARTS: [f64; 5] = [0.25, 0.4, 0.6, 0.8, 1.0];
+const ROUNDS: usize = 12;
+/// Agreement of two rounds, as a share of the time from 10 % to 10 %.
+const AGREED: f64 = 2e-3;
+/// A bend of less than this on the scaled axes is no knee, degrees.
+const LEAST_BEND: f64 = 20.0;
 
-/// Web burning time of a pressure trace (above the outside air) by the aft-tangent bisector (Sutton and Biblarz; from memory). The
-/// axes are scaled by the time from 10 % to 10 % and by the highest pressure.
-pub fn web_time(time_s: &[f64], value: &[f64]) -> Option<WebTime> {
-    let highest = value.iter().copied().fold(0.0, f64::max);
-    let start = value.iter().position(|v| *v >= 0.1 * highest)?;
-    let end = value.iter().rposition(|v| *v >= 0.1 * highest)?;
-    let unit_s = time_s[end] - time_s[start];
-    // The tail-off begins below the level that the last part of the burn holds; that level is found in two steps.
-    let last_above = |level: f64| value.iter().rposition(|v| *v >= level);
-    let mut level_value = highest;
-    let mut found = None;
-    for _ in 0..4 {
-        let fall = time_s[last_above(TAIL_SHARES.0 * level_value)?];
-        let burnt = fall - time_s[start];
-        let from = time_s.partition_point(|t| *t < fall - LEVEL_FROM * burnt);
-        let to = time_s.partition_point(|t| *t < fall - LEVEL_TO * burnt);
-        let level = Line::fit(time_s.get(from..to)?, &value[from..to])?;
-        let (a, b) = (last_above(TAIL_SHARES.0 * level_value)?, last_above(TAIL_SHARES.1 * level_value)?);
-        let tail = Line::fit(&time_s[a..(b + 2).min(time_s.len())], &value[a..(b + 2).min(time_s.len())])?;
-        let (knee_s, knee) = level.meets(&tail)?;
-        found = Some((level, tail, knee_s));
-        level_value = knee.clamp(0.3 * highest, highest);
+/// Level part, tail-off and where they meet.
+#[derive(Debug, Clone, Copy)]
+struct Tangents {
+    level: Line,
+    tail: Line,
+    knee_s: f64,
+    choice_s: f64,
+}
+
+/// A trace and the axes it is drawn on.
+struct Trace<'a> {
+    time_s: &'a [f64],
+    value: &'a [f64],
+    start_s: f64,
+    unit_s: f64,
+    highest: f64,
+}
+
+impl Trace<'_> {
+    fn last_above(&self, level: f64) -> Option<usize> {
+        self.value.iter().rposition(|v| *v >= level)
     }
-    let (level, tail, knee_s) = found?;
-    if tail.slope >= 0.0 || tail.slope >= level.slope || unit_s <= 0.0 {
+
+    fn piece(&self, from: usize, to: usize) -> Option<(&[f64], &[f64])> {
+        Some((self.time_s.get(from..to)?, self.value.get(from..to)?))
+    }
+
+    /// Tangents of the tail-off, steepest first.
+    fn tails(&self, level: f64) -> Vec<Line> {
+        let mut lines: Vec<Line> = TAIL_SHARES
+            .iter()
+            .filter_map(|(high, low)| {
+                let (a, b) = (self.last_above(high * level)?, self.last_above(low * level)?);
+                let (t, v) = self.piece(a, (b + 2).min(self.value.len()))?;
+                Line::fit(t, v).filter(|line| line.slope < 0.0)
+            })
+            .collect();
+        lines.sort_by(|a, b| a.slope.total_cmp(&b.slope));
+        lines
+    }
+
+    fn tangents(&self, level_value: f64) -> Option<(Tangents, f64)> {
+        let fall = *self.time_s.get(self.last_above(FALLEN * level_value)?)?;
+        let burnt = fall - self.start_s;
+        let from = self.time_s.partition_point(|t| *t < fall - LEVEL_FROM * burnt);
+        let to = self.time_s.partition_point(|t| *t < fall - LEVEL_TO * burnt);
+        let (t, v) = self.piece(from, to.max(from + 2))?;
+        let straight = Line::fit(t, v)?;
+        let level = bent(t, v).unwrap_or(straight);
+        let tails = self.tails(level_value);
+        let tail = *tails.first()?;
+        let (knee_s, knee) = level.meets(&tail)?;
+        let moved = |line: Option<(f64, f64)>| line.map_or(0.0, |(s, _)| s - knee_s);
+        let by_level = moved(straight.meets(&tail));
+        let by_tail = moved(tails.get(1).and_then(|next| level.meets(next)));
+        Some((Tangents { level, tail, knee_s, choice_s: 0.5 * by_level.hypot(by_tail) }, knee))
+    }
+
+    /// Turn from level part to tail-off on the scaled axes, degrees; negative where the tail-off is the flatter.
+    fn bend(&self, tangents: &Tangents) -> f64 {
+        let angle = |line: &Line| (line.slope * self.unit_s / self.highest).atan().to_degrees();
+        angle(&tangents.level) - angle(&tangents.tail)
+    }
+
+    /// Rounds of tangents from a level until they agree.
+    fn settle(&self, start: f64) -> Option<Tangents> {
+        let (mut level, mut last) = (start, f64::NEG_INFINITY);
+        for _ in 0..ROUNDS {
+            let (tangents, knee) = self.tangents(level)?;
+            if (tangents.knee_s - last).abs() < AGREED * self.unit_s {
+                return (self.bend(&tangents) > LEAST_BEND).then_some(tangents);
+            }
+            (level, last) = (knee.clamp(0.15 * self.highest, self.highest), tangents.knee_s);
+        }
+        None
+    }
+}
+
+/// Tangent at the end of a parabola through a level part, by least squares; `None` for too few samples.
+fn bent(time_s: &[f64], value: &[f64]) -> Option<Line> {
+    const LEAST: usize = 6;
+    let end = *time_s.last()?;
+    let span = end - time_s.first()?;
+    if time_s.len() < LEAST || span <= 0.0 {
         return None;
     }
-    let end_s = bisector_cut(time_s, value, &level, &tail, unit_s, highest)?;
-    (end_s > time_s[start]).then_some(WebTime { start_s: time_s[start], end_s, knee_s })
+    // On -1 to 1 with the parabola made orthogonal to line and mean, so that each coefficient stands alone.
+    let n = time_s.len() as f64;
+    let x: Vec<f64> = time_s.iter().map(|t| 2.0 * (t - end) / span + 1.0).collect();
+    let mean = |f: &dyn Fn(usize) -> f64| (0..x.len()).map(f).sum::<f64>() / n;
+    let m1 = mean(&|i| x[i]);
+    let c1: Vec<f64> = x.iter().map(|x| x - m1).collect();
+    let v1 = mean(&|i| c1[i] * c1[i]);
+    let (m2, k2) = (mean(&|i| x[i] * x[i]), mean(&|i| x[i] * x[i] * c1[i]) / v1);
+    let c2: Vec<f64> = x.iter().zip(&c1).map(|(x, c)| x * x - m2 - k2 * c).collect();
+    let v2 = mean(&|i| c2[i] * c2[i]);
+    let (a0, a1, a2) = (mean(&|i| value[i]), mean(&|i| value[i] * c1[i]) / v1, mean(&|i| value[i] * c2[i]) / v2);
+    let at = a0 + a1 * (1.0 - m1) + a2 * (1.0 - m2 - k2 * (1.0 - m1));
+    let slope = (a1 + a2 * (2.0 - k2)) * 2.0 / span;
+    (at.is_finite() && slope.is_finite()).then_some(Line { time_s: end, value: at, slope })
+}
+
+/// Web burning time of a pressure trace (above the outside air) by the aft-tangent bisector (Sutton and Biblarz; from memory). The
+/// axes are scaled by the time from 10 % to 10 % and by the highest pressure. `None` where no knee is found.
+pub fn web_time(time_s: &[f64], value: &[f64]) -> Option<WebTime> {
+    let highest = value.iter().copied().fold(0.0, f64::max);
+    let threshold = 0.1 * highest;
+    let first = value.iter().position(|v| *v >= threshold && *v > 0.0)?;
+    let last = value.iter().rposition(|v| *v >= threshold)?;
+    let start_s = match first.checked_sub(1) {
+        Some(k) => time_s[k] + (time_s[first] - time_s[k]) * (threshold - value[k]) / (value[first] - value[k]),
+        None => time_s[first],
+    };
+    let unit_s = time_s[last] - start_s;
+    if unit_s <= 0.0 {
+        return None;
+    }
+    let trace = Trace { time_s, value, start_s, unit_s, highest };
+    // A boost may end in a knee of its own: the last one is meant.
+    let found =
+        STARTS.iter().filter_map(|share| trace.settle(share * highest)).max_by(|a, b| a.knee_s.total_cmp(&b.knee_s))?;
+    let end_s = bisector_cut(time_s, value, &found.level, &found.tail, unit_s, highest)?;
+    (end_s > start_s).then_some(WebTime { start_s, end_s, knee_s: found.knee_s, choice_s: found.choice_s })
 }
 
 #[cfg(test)]

@@ -16,6 +16,10 @@ const LEAST_SAMPLES: usize = 8;
 const BESIDE: usize = 2;
 /// What thrust over pressure may do unseen under the cut, limits as a share (project's own judgement, no source).
 const UNSEEN: f64 = 0.01;
+/// Samples between which the pressure changes by more than this share of the highest are steep; what thrust over pressure may be off by
+/// on slopes alone, limits as a share (project's own judgement, no source).
+const STEEP: f64 = 0.05;
+const ON_SLOPES: f64 = 0.05;
 /// The estimate must reach the cut itself within this share, or pressure and thrust contradict each other.
 const BELOW_CUT: f64 = 0.05;
 /// Intercepts of thrust against the pressure above the air, in throat areas times the outside pressure, as exits of up to twelve
@@ -68,11 +72,30 @@ struct Found {
     samples: usize,
 }
 
-/// `cut`: whether each sample was, `near` as well those beside it; thrust as it was measured.
-fn fill(time_s: &[f64], thrust_n: &[f64], above_pa: &[f64], cut: &[bool], outside_pa: f64) -> Result<Found, String> {
+/// `cut`: whether each sample was; thrust as it was measured; `growth` of the throat's area through the burn, as a share.
+fn fill(
+    time_s: &[f64],
+    thrust_n: &[f64],
+    above_pa: &[f64],
+    cut: &[bool],
+    outside_pa: f64,
+    growth: f64,
+) -> Result<Found, String> {
     let highest = above_pa.iter().copied().fold(0.0, f64::max);
     let near = |i: usize| cut[i.saturating_sub(BESIDE)..(i + BESIDE + 1).min(cut.len())].iter().any(|c| *c);
-    let usable: Vec<usize> = (0..cut.len()).filter(|i| above_pa[*i] > LEAST_PRESSURE * highest && !near(*i)).collect();
+    let steep = |i: usize| {
+        let step = |a: usize, b: usize| (above_pa[a] - above_pa[b]).abs() > STEEP * highest;
+        i > 0 && step(i, i - 1) || i + 1 < cut.len() && step(i, i + 1)
+    };
+    let mut usable: Vec<usize> =
+        (0..cut.len()).filter(|i| above_pa[*i] > LEAST_PRESSURE * highest && !near(*i)).collect();
+    // Where both run steeply a part of a sample between them counts as a difference of thrust: such samples only where there are no
+    // others.
+    let calm: Vec<usize> = usable.iter().copied().filter(|i| !steep(*i)).collect();
+    let calm_enough = calm.len() >= LEAST_SAMPLES;
+    if calm_enough {
+        usable = calm;
+    }
     if usable.len() < LEAST_SAMPLES {
         return Err(format!("only {} samples of the burn outside the cut tell thrust over pressure", usable.len()));
     }
@@ -92,6 +115,8 @@ fn fill(time_s: &[f64], thrust_n: &[f64], above_pa: &[f64], cut: &[bool], outsid
         }
         _ => 0.0,
     };
+    // When in the burn a throat grew is not known.
+    let moved = moved.max(0.5 * growth.abs()).max(if calm_enough { 0.0 } else { ON_SLOPES });
     let residual: f64 = pairs.iter().map(|(f, p)| (f - thrust(*p)).powi(2)).sum::<f64>();
     let pressure_squares: f64 = pairs.iter().map(|x| x.1 * x.1).sum();
     let scatter = (residual / (pairs.len() - 1) as f64 / pressure_squares).sqrt() / plain.slope_m2;
@@ -145,9 +170,18 @@ pub(super) fn estimate(
     let offset = zero.window.start;
     let (from, to) = (zero.burst.start, zero.burst.end);
     let inside = from - offset..to - offset;
-    let above_pa: Vec<f64> = pressure.curve_pa[inside.clone()].iter().map(|p| p - pressure.air_pa).collect();
+    let (starts, ends) = (record.time_s[record.burn.start], record.time_s[record.burn.end - 1]);
+    // A throat that was measured to grow lets the same pressure push more: evenly along the burn, for want of better knowledge.
+    let grown =
+        |t: f64| 1.0 + pressure.growth * ((t - starts) / (ends - starts).max(f64::MIN_POSITIVE)).clamp(0.0, 1.0);
+    let above_pa: Vec<f64> = pressure.curve_pa[inside.clone()]
+        .iter()
+        .zip(&record.time_s[from..to])
+        .map(|(p, t)| (p - pressure.air_pa) * grown(*t))
+        .collect();
     let cut: Vec<bool> = (from..to).map(|i| ranges.iter().any(|r| r.contains(&i))).collect();
-    let found = fill(&record.time_s[from..to], &zero.thrust_n[inside], &above_pa, &cut, pressure.air_pa);
+    let found =
+        fill(&record.time_s[from..to], &zero.thrust_n[inside], &above_pa, &cut, pressure.air_pa, pressure.growth);
     let found = match found {
         Ok(found) => found,
         Err(why) => {
@@ -216,7 +250,7 @@ mod tests {
     #[test]
     fn what_was_cut_comes_back_where_thrust_follows_pressure() {
         let (t, f, p, cut, missing, top) = cut_arch(|p| p * 400.0 / 3e6);
-        let found = fill(&t, &f, &p, &cut, 1e5).expect("an estimate");
+        let found = fill(&t, &f, &p, &cut, 1e5, 0.0).expect("an estimate");
         // Straight lines between samples at 1 ms bend by less than 1e-6 of the thrust; the cut's ends lie between samples.
         assert!((found.added / missing - 1.0).abs() < 1e-3, "{} {missing}", found.added);
         assert!((found.peak_n / top - 1.0).abs() < 1e-6);
@@ -226,7 +260,7 @@ mod tests {
     fn a_nozzle_against_the_air_is_within_what_is_said() {
         // Throat 0.83 cm², coefficient in vacuum 1.7, exit six throats.
         let (t, f, p, cut, missing, top) = cut_arch(|p| 0.83e-4 * (1.7 * (p + 1e5) - 6e5));
-        let found = fill(&t, &f, &p, &cut, 1e5).expect("an estimate");
+        let found = fill(&t, &f, &p, &cut, 1e5, 0.0).expect("an estimate");
         assert!((found.added - missing).abs() < 2.0 * found.model_u * found.filled, "{} {missing}", found.added);
         assert!((found.peak_n - top).abs() < 2.0 * found.model_u * top, "{} {top} {}", found.peak_n, found.model_u);
     }
@@ -234,8 +268,8 @@ mod tests {
     #[test]
     fn no_estimate_where_nothing_but_the_cut_is_left_or_both_contradict() {
         let (t, f, p, cut, ..) = cut_arch(|p| p * 400.0 / 3e6);
-        assert!(fill(&t, &f, &p, &vec![true; cut.len()], 1e5).is_err());
+        assert!(fill(&t, &f, &p, &vec![true; cut.len()], 1e5, 0.0).is_err());
         let flat: Vec<f64> = p.iter().zip(&cut).map(|(p, c)| if *c { 1e6 } else { *p }).collect();
-        assert!(fill(&t, &f, &flat, &cut, 1e5).is_err_and(|why| why.contains("contradict")));
+        assert!(fill(&t, &f, &flat, &cut, 1e5, 0.0).is_err_and(|why| why.contains("contradict")));
     }
 }

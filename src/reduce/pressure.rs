@@ -6,7 +6,7 @@ use super::steady::{self, Course};
 use super::zero::Zero;
 use super::{Record, force};
 use crate::calibration::{Calibration, ErrorShape};
-use crate::condition::{clipping, conditioned};
+use crate::condition::{averaging, clipping, conditioned};
 use crate::firing::{Figure, Quantities};
 use crate::log::Column;
 use crate::measure::integral;
@@ -30,6 +30,8 @@ const BAROMETER_PA: f64 = 100.0;
 const LIVEABLE_PA: std::ops::Range<f64> = 45_000.0..110_000.0;
 /// Quiet samples below which the zero counts as not seen.
 const LEAST_QUIET: usize = 8;
+/// Samples before the burst at which the pressure may already rise.
+const BEFORE_BURST: usize = 3;
 /// Parts of a quiet stretch whose means show what slow noise does to its level.
 const BLOCKS: usize = 10;
 /// Standard errors from which on a shift of the zero counts as seen.
@@ -50,6 +52,8 @@ pub(super) struct Pressure {
     /// Over the burn time, raised by the share of the impulse outside it.
     pub total_integral_pa_s: f64,
     pub throat_area_m2: Option<f64>,
+    /// Growth of the throat's area through the burn, as a share, where it was measured.
+    pub growth: f64,
     pub web_s: Option<f64>,
     pub effects: Vec<Effect>,
     /// The scale of the channel has a stated error, and its zero was seen.
@@ -233,6 +237,14 @@ pub(super) fn measure(
         );
         return Ok(None);
     };
+    if record.averaged_cells() {
+        // As with thrust: the means of cells hide what stood between their ends.
+        let top = averaging::reconstruct(&smooth.thrust_n, noise).value.into_iter().fold(0.0, f64::max);
+        if top > peak.thrust_n {
+            peak.noise_u_n = peak.noise_u_n.hypot(0.5 * (top - peak.thrust_n));
+            peak.thrust_n = top;
+        }
+    }
     let clipped = clipping::find_clipping(&column.values)
         .iter()
         .flat_map(|c| c.ranges.iter())
@@ -310,12 +322,18 @@ pub(super) fn measure(
     });
 
     let throat = throat(record, &mut effects, findings);
-    let web =
-        web(&smooth.time_s[first..last], &smooth.thrust_n[first..last], run.motor.web_thickness_m.is_some(), findings);
+    let web = web(
+        &smooth.time_s[first.saturating_sub(BEFORE_BURST)..last],
+        &smooth.thrust_n[first.saturating_sub(BEFORE_BURST)..last],
+        run.motor.web_thickness_m.is_some(),
+        findings,
+    );
     let mut web_known = false;
     if let (Some(web), Some(thickness)) = (&web, run.motor.web_thickness_m) {
         // A knee as sharp as the tangents would have it, or as early before it as the bisector's cut.
-        let u = (web.knee_s - web.end_s).abs().hypot(record.interval_s()) / 3f64.sqrt();
+        // The start lies between two samples as well.
+        let interval = std::f64::consts::SQRT_2 * record.interval_s();
+        let u = (web.knee_s - web.end_s).hypot(web.choice_s).hypot(interval) / 3f64.sqrt();
         effects.push(Effect { web_time: u, ..Effect::of("end of the web").shaped(Shape::Rectangular) });
         web_known = thickness.standard_uncertainty.is_some();
         match thickness.standard_uncertainty {
@@ -345,6 +363,7 @@ pub(super) fn measure(
         action_integral_pa_s,
         total_integral_pa_s,
         throat_area_m2: throat.map(|t| t.area_m2),
+        growth: throat.map_or(0.0, |t| t.growth),
         web_s: web.map(|w| w.end_s - w.start_s),
         effects,
         known: calibration.errors.is_some() && rest.before.is_some(),

@@ -46,6 +46,11 @@ fn for_source(source: &str) -> Option<&'static str> {
         "pressure scale" => "a calibrated pressure transducer",
         "throat diameter" | "wear of the throat" => "a better measured throat, before and after",
         "air pressure" => "the air pressure of the day under [conditions]",
+        "zero of the pressure" | "course of the pressure's zero" => {
+            "a longer quiet record and a steadier pressure transducer"
+        }
+        "noise of the pressure" | "noise at the highest pressure" => "a quieter pressure channel",
+        "end of the web" => "a faster logger; a rounded knee stays uncertain",
         "web thickness" => "a better measured web",
         _ => return None,
     })

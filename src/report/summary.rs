@@ -3,7 +3,7 @@
 use super::advice;
 use super::figures::named;
 use super::units::{Units, fixed, percent, words};
-use crate::firing::{Firing, Status};
+use crate::firing::{Estimate, Figure, Firing, Status};
 use std::path::Path;
 
 /// How the summary is to look.
@@ -153,7 +153,12 @@ fn figures(firing: &Firing, view: View, lines: &mut Vec<String>) {
                 format!("  {:<19} {:>10} {spread:<11} {}{source}", entry.name, shown.value, shown.unit)
             }
         };
-        let text = text.trim_end().to_owned();
+        let mut text = text.trim_end().to_owned();
+        if let Some(figure) = entry.figure
+            && let Some(estimate) = &figure.estimate
+        {
+            text.push_str(&format!("\n{:<22}{}", "", estimated(figure, estimate, view)));
+        }
         lines.push(if place == 0 { view.paint(&text, Tone::Strong) } else { text });
         if place == 0 {
             lines.push(String::new());
@@ -163,6 +168,21 @@ fn figures(firing: &Firing, view: View, lines: &mut Vec<String>) {
     if without_interval {
         lines.push("  ± not known: the error of the force scale, or of a mass, was not stated.".to_owned());
     }
+}
+
+/// `perhaps 812 ± 14 N·s by estimate`: what stands beside a bound, never in its place.
+fn estimated(figure: &Figure, estimate: &Estimate, view: View) -> String {
+    let shown = Figure {
+        value: estimate.value,
+        standard_uncertainty: estimate.standard_uncertainty,
+        interval_95: estimate.interval_95,
+        bound: None,
+        source: None,
+        estimate: None,
+        ..figure.clone()
+    };
+    let basis = estimate.method.split(':').next().unwrap_or_default();
+    format!("estimate, not measured: {} ({})", words(&shown, view.units).line(), plain(basis))
 }
 
 fn checks(firing: &Firing, view: View, lines: &mut Vec<String>) {
