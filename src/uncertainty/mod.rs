@@ -3,4 +3,5 @@
 pub mod distribution;
 pub mod effects;
 pub mod monte_carlo;
+pub mod propagation;
 pub mod statistics;
