@@ -10,6 +10,7 @@ use crate::measure::{class, integral};
 use crate::quantity::STANDARD_GRAVITY_M_S2;
 use crate::run::Role;
 use crate::uncertainty::effects::{self, Budgets, DRAWN, Found, Propagated};
+use crate::uncertainty::improvement::{self, two_digits};
 use crate::uncertainty::monte_carlo::{self, Spread};
 use rayon::prelude::*;
 use std::collections::BTreeMap;
@@ -290,6 +291,11 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
     let impulse_known = q.total_impulse.as_ref().is_some_and(|f| f.standard_uncertainty.is_some());
     let impulse_trials = trials.first().filter(|_| impulse_known).cloned();
     draw_intervals(&mut q, &first_order, trials, &mut findings);
+    for (key, budget) in &mut b.0 {
+        if let Some((figure, [low, high])) = q.by_key_mut(key).and_then(|f| Some((&*f, f.interval_95?))) {
+            improvement::suggest(budget, 0.5 * (high - low), &figure.unit);
+        }
+    }
     let zero_u_n = [zero.baseline.before, zero.baseline.after]
         .iter()
         .flatten()
@@ -334,7 +340,7 @@ fn draw_intervals(
         let [drawn_low, drawn_high] = spread.shortest_95;
         figure.interval_95 = Some(spread.shortest_95);
         if (drawn_low - low).abs().max((drawn_high - high).abs()) > propagated.combined.numerical_tolerance() {
-            let half = |low: f64, high: f64| significant(0.5 * (high - low));
+            let half = |low: f64, high: f64| two_digits(0.5 * (high - low));
             differ.push(format!("{words} ± {} not ± {}", half(drawn_low, drawn_high), half(low, high)));
         }
     }
@@ -345,12 +351,6 @@ fn draw_intervals(
             differ.join(", ")
         ));
     }
-}
-
-/// A number to two digits, for a finding.
-fn significant(value: f64) -> String {
-    let places = if value > 0.0 { (1.0 - value.log10().floor()).clamp(0.0, 12.0) as usize } else { 0 };
-    format!("{value:.places$}")
 }
 
 /// Stretches of clipped samples that touch the burst.

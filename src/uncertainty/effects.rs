@@ -259,7 +259,12 @@ impl Propagated {
         let mut lines: Vec<BudgetLine> = self
             .lines
             .iter()
-            .map(|(source, u)| BudgetLine { source: source.clone(), standard_uncertainty: *u, share: u * u / variance })
+            .map(|(source, u)| BudgetLine {
+                source: source.clone(),
+                standard_uncertainty: *u,
+                share: u * u / variance,
+                improvement: None,
+            })
             .collect();
         lines.sort_by(|a, b| b.standard_uncertainty.total_cmp(&a.standard_uncertainty));
         lines
