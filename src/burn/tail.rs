@@ -76,7 +76,7 @@ const LONGER: f64 = 1.4;
 /// A stretch is explained when its residual variance exceeds the noise's by no more than this factor, give or take scatter.
 const EXPLAINED: f64 = 1.2;
 /// The course of a tail is not known to be exponential: at least this share of its impulse is uncertain.
-const COURSE_SHARE: f64 = 0.1;
+const COURSE_SHARE: f64 = 0.06;
 
 /// Extrapolates the tail of a burst from its last samples: from the longest stretch up to the end of the record that an
 /// exponential explains within the noise (`noise_n`, standard deviation of a sample), none of it above 70 % of peak.

@@ -306,7 +306,8 @@ impl Work<'_> {
 
     fn ends(&self, delay_u: Option<f64>) -> Vec<Effect> {
         let curve = self.curve;
-        // Noise, place between two samples, and shape of a fast edge: one standard uncertainty of each, s.
+        // Noise, place between two samples (the middle likelier than the ends), and shape of a fast edge: one standard
+        // uncertainty of each, s.
         let instant = |c: &Crossing, level: f64, rising: bool| {
             if c.slope.is_infinite() {
                 return [0.0; 3];
@@ -319,7 +320,7 @@ impl Work<'_> {
             // The shape of a rise that passes within a few samples is known to a part of one interval only.
             let dt = curve.conditioned.interval_s;
             let steep = (c.slope * dt / (STEEP_SHARE * curve.peak.thrust_n)).min(1.0);
-            [noise, c.sampling_half_width_s / 3f64.sqrt(), EDGE_SHARE * dt * steep]
+            [noise, c.sampling_half_width_s / 6f64.sqrt(), EDGE_SHARE * dt * steep]
         };
         let start = instant(&self.burn.start, BURN_LEVEL, true);
         let end = instant(&self.burn.end, BURN_LEVEL, false);
@@ -329,7 +330,7 @@ impl Work<'_> {
         let action_n = ACTION_LEVEL * curve.peak.thrust_n;
         let source = "interval ends";
         let mut effects = Vec::new();
-        for (part, shape) in [Shape::Normal, Shape::Rectangular, Shape::Normal].into_iter().enumerate() {
+        for (part, shape) in [Shape::Normal, Shape::Triangular, Shape::Normal].into_iter().enumerate() {
             effects.push(Effect {
                 burn_time: -start[part],
                 burn_impulse: -level_n * start[part],
