@@ -16,7 +16,7 @@ pub struct View {
 
 const WIDTH: usize = 80;
 /// Checks beyond this many that are only cautions are counted, so that the summary fits on a screen.
-const MOST_CAUTIONS: usize = 4;
+const MOST_CAUTIONS: usize = 3;
 /// With more cautions than this the advice on them is left to the page, for the same reason.
 const MOST_ADVISED: usize = 2;
 
@@ -156,22 +156,14 @@ fn improvement(firing: &Firing, view: View, lines: &mut Vec<String>) {
         .filter(|entry| matches!(entry.key, "total_impulse" | "burn_time"))
         .find_map(|entry| {
             let first = firing.uncertainty_budget.get(entry.key)?.first()?.improvement.as_ref()?;
-            entry.figure.map(|figure| (entry.name, figure, first))
+            entry.figure.map(|figure| (figure, first))
         });
-    if let Some((name, figure, improvement)) = best {
+    if let Some((figure, improvement)) = best {
         let half = improvement.half_width_95_if_halved;
         let halved = Figure { interval_95: Some([figure.value - half, figure.value + half]), ..figure.clone() };
         let halved = words(&halved, view.units);
-        lines.extend(wrapped(
-            &format!(
-                "to improve first: {}; half that error would leave {name} ± {} {}",
-                plain(&improvement.remedy),
-                halved.half_width,
-                halved.unit
-            ),
-            "  ",
-            "  ",
-        ));
+        let text = format!("{}; half that error: ± {} {}", plain(&improvement.remedy), halved.half_width, halved.unit);
+        lines.extend(wrapped(&text, "  to improve first: ", "  "));
     }
 }
 
@@ -259,8 +251,7 @@ mod tests {
         assert!(order.windows(2).all(|pair| place(pair[0]) < place(pair[1])), "{text}");
         assert!(!text.contains("sampling"), "checks that passed are only counted");
         assert!(text.contains("95 %"));
-        assert!(text.contains("to improve first: use better weights; half that error would leave"), "{text}");
-        assert!(text.contains("total impulse ± 2.3 N·s"), "{text}");
+        assert!(text.contains("to improve first: use better weights; half that error: ± 2.3 N·s"), "{text}");
         if let Ok(folder) = std::env::var("BURNTALLY_TEST_PICTURES") {
             std::fs::write(Path::new(&folder).join("summary.txt"), &text).unwrap();
         }

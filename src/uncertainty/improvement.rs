@@ -5,28 +5,28 @@ use crate::firing::{BudgetLine, Improvement};
 /// A source with less than this share of the variance is no use to improve, unless it is the largest.
 const WORTH_SHARE: f64 = 0.3;
 
-/// What makes a source's error smaller.
+/// What makes a source's error smaller, in at most 33 letters, so that it has room on a line of the screen.
 fn remedy(source: &str) -> Option<&'static str> {
     Some(match source {
-        "calibration fit" => "calibrate with more points, up and down",
+        "calibration fit" => "calibrate with more points",
         "weights" => "calibrate with better known weights",
-        "gravity" => "give gravity, or latitude and height, under [site]",
-        "air buoyancy" => "use denser weights, or measure the air's density",
-        "beyond the heaviest weight" => "calibrate with weights up to the peak thrust",
+        "gravity" => "give gravity under [site]",
+        "air buoyancy" => "calibrate with denser weights",
+        "beyond the heaviest weight" => "calibrate up to the peak thrust",
         "stated accuracy" => "calibrate the cell with weights",
-        "force ratio" => "measure the force ratio with a known force where the motor sits",
-        "clock" => "compare the logger's clock with a good one, and state clock_tolerance",
-        "propellant mass" => "weigh the propellant on a finer scale",
-        "weighing" => "weigh the motor on a finer scale",
+        "force ratio" => "measure the force ratio better",
+        "clock" => "have the logger's clock checked",
+        "propellant mass" => "weigh the propellant finer",
+        "weighing" => "weigh the motor finer",
         "zero before" => "record more quiet before ignition",
         "zero after" => "record more quiet after the burn",
-        "course of the zero's drift" => "keep heat off the cell, and friction out of the stand",
-        "noise" => "shield the cable, against noise",
-        "noise at the peak" => "sample faster, and shield the cable against noise",
+        "course of the zero's drift" => "keep heat off cell and stand",
+        "noise" => "shield the cable against noise",
+        "noise at the peak" => "sample faster, with less noise",
         "sampling" => "sample faster",
         "interval ends" => "sample faster, with less noise",
-        "ignition signal" => "sample the igniter's channel faster",
-        "tail beyond the record" => "let the record run on until the stand is quiet",
+        "ignition signal" => "sample the igniter faster",
+        "tail beyond the record" => "record until the stand is quiet",
         _ => return None,
     })
 }
@@ -101,7 +101,7 @@ mod tests {
             .collect();
         assert!(names.len() >= 15, "{names:?}");
         for name in names {
-            assert!(remedy(name).is_some(), "{name}");
+            assert!(remedy(name).is_some_and(|remedy| remedy.chars().count() <= 33), "{name}");
         }
     }
 
