@@ -221,7 +221,8 @@ impl Work<'_> {
             action_time: -moved(&self.action.start) - moved(&self.action.end),
             peak_thrust: -course(self.curve.peak.time_s),
             initial_thrust: integral::between(self.bt, &change, start.time_s, start.time_s + self.initial_s)
-                / self.initial_s,
+                / self.initial_s
+                + moved(start) * self.initial_per_second(),
             ..Effect::of(source)
         }
     }
@@ -337,6 +338,7 @@ impl Work<'_> {
                 action_time: -up[part],
                 action_impulse: -action_n * up[part],
                 rise_time: -up[part],
+                initial_thrust: start[part] * self.initial_per_second(),
                 ignition_delay: delay_u.map_or(0.0, |_| start[part]),
                 ..Effect::of(source).shaped(shape)
             });
@@ -355,6 +357,13 @@ impl Work<'_> {
             ..Effect::of("ignition signal").shaped(Shape::Rectangular)
         });
         effects
+    }
+
+    /// What the initial thrust gains when the start of its stretch is set later, N/s: thrust at the end for thrust at the start.
+    fn initial_per_second(&self) -> f64 {
+        let thrust = |time_s: f64| curve::at(&self.curve.time_s, &self.curve.thrust_n, time_s);
+        let start_s = self.burn.start.time_s;
+        (thrust(start_s + self.initial_s) - thrust(start_s)) / self.initial_s
     }
 
     /// Half the time that the curve takes through `level_n` ± `error_n`: in noise it climbs down in steps, and the slope of one step

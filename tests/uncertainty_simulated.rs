@@ -1,0 +1,122 @@
+//! The stated uncertainty against brute force: everything hidden is drawn anew, and the whole program is run on each.
+//!
+//! One motor is fired many times. Each time the noise, the place of the samples, the weights of the calibration and its readings, the
+//! logger's clock and the weighing err anew within what the files state. The figures' scatter about the truth is held
+//! against the standard uncertainties stated, and those against the Monte Carlo intervals. `-- --nocapture` shows the ratios.
+
+mod simulator;
+
+use burntally::firing::{Figure, Firing};
+use burntally::load::load_run;
+use burntally::reduce::reduce;
+use rand::{RngExt, SeedableRng};
+use rayon::prelude::*;
+use simulator::cell::Cell;
+use simulator::logger::Logger;
+use simulator::motor::Motor;
+use simulator::stand::{Orientation, Stand};
+use simulator::{Scenario, Truth};
+
+const FIRINGS: u64 = 300;
+
+/// The same firing with other hidden errors.
+fn again(scenario: &Scenario, number: u64) -> (Firing, Truth) {
+    let mut random = rand_chacha::ChaCha8Rng::seed_from_u64(7_000 + number);
+    let mut scenario = scenario.clone();
+    scenario.seed = 40_000 + number;
+    scenario.cell.calibration_seed = 80_000 + number;
+    scenario.before_s += random.random::<f64>() / scenario.logger.rate_hz;
+    let percent = scenario.logger.clock_tolerance.as_deref().and_then(|t| t.strip_suffix(" %")?.parse::<f64>().ok());
+    scenario.logger.clock_error = percent.map_or(0.0, |p| 0.01 * p * random.random_range(-1.0..1.0));
+    let simulated = scenario.simulate();
+    let dir = tempfile::tempdir().expect("a temporary folder");
+    let path = simulated.write_to(dir.path()).expect("a run folder");
+    let inputs = load_run(&path).unwrap_or_else(|problem| panic!("{number}: {problem}"));
+    (reduce(&inputs).unwrap_or_else(|problem| panic!("{number}: {problem}")).firing, simulated.truth)
+}
+
+struct Row {
+    name: &'static str,
+    found: fn(&Firing) -> &Option<Figure>,
+    truth: fn(&Truth) -> f64,
+    /// Scatter over stated uncertainty: what is allowed beside the scatter's own chance.
+    allowed: std::ops::RangeInclusive<f64>,
+}
+
+fn hold(scenario: &Scenario, rows: &[Row]) {
+    let firings: Vec<(Firing, Truth)> = (0..FIRINGS).into_par_iter().map(|n| again(scenario, n)).collect();
+    let mut failures = Vec::new();
+    for row in rows {
+        let (mut errors, mut stated, mut held) = (0.0, 0.0, 0);
+        for (firing, truth) in &firings {
+            let figure = (row.found)(firing).as_ref().expect(row.name);
+            let truth = (row.truth)(truth);
+            errors += (figure.value - truth).powi(2);
+            stated += figure.standard_uncertainty.expect("u").powi(2);
+            let [low, high] = figure.interval_95.expect("an interval");
+            held += usize::from((low..=high).contains(&truth));
+        }
+        let ratio = (errors / stated).sqrt();
+        println!("{:<18} scatter / stated {ratio:.3}  held {:.3}", row.name, held as f64 / FIRINGS as f64);
+        // A root mean square of n errors is itself uncertain by 1/√(2n); four of that.
+        let chance = 4.0 / (2.0 * FIRINGS as f64).sqrt();
+        if ratio < row.allowed.start() - chance || ratio > row.allowed.end() + chance {
+            failures.push(format!("{}: errors are {ratio:.3} of what is stated", row.name));
+        }
+    }
+    assert!(failures.is_empty(), "{}", failures.join("\n"));
+}
+
+fn row(
+    name: &'static str,
+    found: fn(&Firing) -> &Option<Figure>,
+    truth: fn(&Truth) -> f64,
+    allowed: std::ops::RangeInclusive<f64>,
+) -> Row {
+    Row { name, found, truth, allowed }
+}
+
+#[test]
+fn a_horizontal_firing_scatters_as_stated() {
+    let scenario = Scenario {
+        motor: Motor { roughness: 0.0, ..Motor::default() },
+        cell: Cell { weight_tolerance: 1e-3, noise_n: 3.0, ..Cell::default() },
+        logger: Logger { rate_hz: 300.0, clock_tolerance: Some("0.1 %".into()), ..Logger::default() },
+        ..Scenario::default()
+    };
+    hold(
+        &scenario,
+        &[
+            row("total impulse", |f| &f.quantities.total_impulse, |t| t.total_impulse_n_s, 0.9..=1.0),
+            row("burn time", |f| &f.quantities.burn_time, |t| t.burn_time_s, 0.6..=1.0),
+            row("average thrust", |f| &f.quantities.average_thrust, |t| t.average_thrust_n, 0.6..=1.0),
+            row("specific impulse", |f| &f.quantities.specific_impulse, |t| t.specific_impulse_s, 0.9..=1.0),
+            row("propellant mass", |f| &f.quantities.propellant_mass, |t| t.propellant_mass_kg, 0.9..=1.0),
+            row("initial thrust", |f| &f.quantities.initial_thrust, |t| t.initial_thrust_n, 0.6..=1.0),
+            row("action time", |f| &f.quantities.action_time, |t| t.action_time_s, 0.6..=1.0),
+            row("peak thrust", |f| &f.quantities.peak_thrust, |t| t.peak_thrust_n, 0.6..=1.0),
+        ],
+    );
+}
+
+/// Propellant mass from the weight that left the stand: the cell's slope cancels in specific impulse.
+#[test]
+fn a_nozzle_up_firing_scatters_as_stated() {
+    let scenario = Scenario {
+        motor: Motor { roughness: 0.0, ..Motor::default() },
+        stand: Stand { orientation: Orientation::NozzleUp, ..Stand::default() },
+        cell: Cell { weight_tolerance: 2e-3, ..Cell::default() },
+        logger: Logger { rate_hz: 300.0, ..Logger::default() },
+        propellant_told: false,
+        ..Scenario::default()
+    };
+    hold(
+        &scenario,
+        &[
+            row("total impulse", |f| &f.quantities.total_impulse, |t| t.total_impulse_n_s, 0.9..=1.0),
+            row("specific impulse", |f| &f.quantities.specific_impulse, |t| t.specific_impulse_s, 0.9..=1.0),
+            row("propellant mass", |f| &f.quantities.propellant_mass, |t| t.propellant_mass_kg, 0.9..=1.0),
+            row("average thrust", |f| &f.quantities.average_thrust, |t| t.average_thrust_n, 0.6..=1.0),
+        ],
+    );
+}
