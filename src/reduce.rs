@@ -5,6 +5,7 @@ mod checks;
 mod curve;
 mod figures;
 mod force;
+mod pressure;
 mod sources;
 mod stand;
 mod zero;
@@ -84,7 +85,7 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
     let zero = zero::correct(&record);
     let stand = stand::find(&record, &zero);
     let curve = curve::condition(&record, &zero, stand.as_ref())?;
-    let mut figures = figures::measure(&record, &zero, &curve);
+    let mut figures = figures::measure(&record, &zero, &curve)?;
     let checks = checks::all(&record, &zero, &curve, &figures, stand.as_ref());
     let bursts = describe_bursts(&record, &figures);
     let curves = curve::for_display(&record, &zero, &curve, &figures);

@@ -15,6 +15,8 @@ pub struct QuietFit {
     /// Standard uncertainty of the level at `at_s`, with the noise's own correlation.
     pub level_u: f64,
     pub slope_u: f64,
+    /// Covariance of this level with that of the other stretch, where one line was fitted to both; else nil.
+    pub level_covariance: f64,
     /// Standard deviation of single samples about the line.
     pub sample_sd: f64,
     /// Two-sided spectral density of the noise at low frequency, unit² s: an integral over T s has variance density·T.
@@ -96,6 +98,7 @@ pub fn fit_with(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64, ev
         slope_per_s: used,
         level_u,
         slope_u: slope_error,
+        level_covariance: 0.0,
         sample_sd: sd,
         low_frequency_density: sd * sd * factor * duration_s / nf,
         samples: n,
@@ -168,16 +171,18 @@ pub fn fit_together(
         return None;
     }
     let covariance = inverse * (within * inflation);
+    let row = |k: usize| Vector3::new(1.0, at_s[k] - at_s[0], if k == 1 && free { 1.0 } else { 0.0 });
+    let between = |k: usize, l: usize| (row(k).transpose() * covariance * row(l))[0];
     let at = |k: usize| {
         let x = at_s[k] - at_s[0];
-        let g = Vector3::new(1.0, x, if k == 1 && free { 1.0 } else { 0.0 });
         let shift = if k == 1 { step.unwrap_or(c[2]) } else { 0.0 };
         QuietFit {
             at_s: at_s[k],
             level: c[0] + c[1] * x + shift,
             slope_per_s: c[1],
-            level_u: (g.transpose() * covariance * g)[0].max(0.0).sqrt(),
+            level_u: between(k, k).max(0.0).sqrt(),
             slope_u: covariance[(1, 1)].max(0.0).sqrt(),
+            level_covariance: between(0, 1),
             ..apart[k]
         }
     };

@@ -1,4 +1,5 @@
-//! Impulse, thrust, times, class.
+//! Impulse, thrust, times, class, figures from pressure.
 
 pub mod class;
 pub mod integral;
+pub mod pressure;

@@ -175,7 +175,7 @@ pub fn for_display(record: &Record<'_>, zero: &Zero, curve: &Curve, figures: &Fi
         thrust_n,
         burn_threshold_n: super::figures::BURN_LEVEL * figures.peak_n,
         peak_time_s: curve.peak.time_s,
-        pressure_pa: None,
+        pressure_pa: figures.pressure_pa.clone(),
     }
 }
 

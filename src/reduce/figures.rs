@@ -3,13 +3,14 @@
 use super::curve::{self, Curve};
 use super::sources::Work;
 use super::zero::Zero;
-use super::{Record, force};
+use super::{Record, force, pressure};
 use crate::burn::crossings::{self, Crossing};
 use crate::firing::{BudgetLine, BurnTimes, Figure, MotorClass, Quantities};
 use crate::measure::{class, integral};
+use crate::problem::Problem;
 use crate::quantity::STANDARD_GRAVITY_M_S2;
 use crate::run::Role;
-use crate::uncertainty::effects::{self, Budgets, DRAWN, Found, Propagated};
+use crate::uncertainty::effects::{self, Acts, Budgets, DRAWN, Found, Propagated};
 use crate::uncertainty::improvement::{self, two_digits};
 use crate::uncertainty::monte_carlo::{self, Spread};
 use rayon::prelude::*;
@@ -50,6 +51,8 @@ pub struct Figures {
     relative_u: f64,
     zero_u_n: f64,
     noise_u_n: f64,
+    /// Absolute chamber pressure at the samples of the zero's window, Pa.
+    pub pressure_pa: Option<Vec<f64>>,
     /// Mass that the weight shift speaks for, where it was the source.
     pub mass_from_shift: bool,
 }
@@ -152,7 +155,11 @@ fn thrust_limits(curve: &Curve, ends: &Ends) -> (f64, f64) {
     (start, end)
 }
 
-pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
+/// Reads every figure from the curve.
+///
+/// # Errors
+/// What the pressure channel is refused for.
+pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Result<Figures, Problem> {
     let run = &record.inputs.run;
     let mut findings = Vec::new();
     let (t, f) = (&record.time_s[zero.window.clone()], &zero.thrust_n);
@@ -225,6 +232,19 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         delay: delay.map(|d| d.0),
     };
     let (mut effects, scale_known) = work.effects(delay.map(|d| d.1), mass.as_ref().map(|m| m.1));
+    let pressure = pressure::measure(
+        record,
+        zero,
+        &pressure::Thrust { curve, burn: &burn, action: &action, beyond_burn: total_impulse / burn_impulse },
+    )?;
+    if let Some(pressure) = &pressure {
+        effects.extend(pressure.effects.iter().cloned());
+        // The same ends of the action time bound both integrals.
+        for effect in effects.iter_mut().filter(|e| e.action_time != 0.0 && e.acts == Acts::Adds) {
+            let edge = curve::at(&record.time_s[zero.window.clone()], &pressure.curve_pa, action.end.time_s);
+            effect.pressure_action += edge * effect.action_time;
+        }
+    }
     effects.retain(|e| !e.is_nil());
     let relative_u =
         Propagated::collect(&effects.iter().filter(|e| is_scale(&e.source)).cloned().collect::<Vec<_>>(), |e| {
@@ -233,10 +253,13 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         .standard_uncertainty()
             / peak_n;
 
-    let found = Found {
+    let mut found = Found {
         amounts: work.found(mass.as_ref().map(|m| m.0)),
         mass_from_force: mass.as_ref().is_some_and(|m| m.2.is_some()),
     };
+    if let Some(pressure) = &pressure {
+        pressure.amounts(&mut found.amounts, run.motor.web_thickness_m.map(|w| w.value));
+    }
     let first_order: BTreeMap<&str, Propagated> =
         DRAWN.into_iter().zip(effects::first_order(&found, &effects)).collect();
     let mut b = Budgets::default();
@@ -267,6 +290,11 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         q.specific_impulse = Some(fig("specific_impulse", ve / STANDARD_GRAVITY_M_S2, "s", known));
         q.effective_exhaust_velocity = Some(fig("effective_exhaust_velocity", ve, "m/s", known));
         q.propellant_mass = Some(Figure { source: source.clone(), ..figure });
+    }
+    if let Some(pressure) = &pressure {
+        let mass = mass.as_ref().map(|(kg, u_kg, _)| (*kg, u_kg.is_some()));
+        pressure.figures(&mut q, &found.amounts, mass, k, &mut fig);
+        findings.extend(pressure.findings.iter().cloned());
     }
     if let (Some(before), Some(after)) = (run.motor.mass_before_kg, run.motor.mass_after_kg) {
         let known = before.standard_uncertainty.is_some() && after.standard_uncertainty.is_some();
@@ -302,7 +330,8 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         .map(|q| q.level_u)
         .fold(0.0, f64::max)
         .hypot(zero.drift_u_n);
-    Figures {
+    Ok(Figures {
+        pressure_pa: pressure.map(|p| p.curve_pa),
         class: class::classify(total_impulse, impulse_trials.as_deref(), average),
         quantities: q,
         times,
@@ -315,7 +344,7 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Figures {
         zero_u_n,
         noise_u_n: curve.peak.noise_u_n,
         mass_from_shift: found.mass_from_force,
-    }
+    })
 }
 
 /// Puts the trials' shortest 95 % intervals in the place of the first-order ones, and says where the two ways differ by more than

@@ -11,6 +11,8 @@ use crate::measure::integral;
 use crate::run::Orientation;
 use crate::uncertainty::distribution::Shape;
 use crate::uncertainty::effects::{Acts, Effect};
+use crate::uncertainty::propagation;
+use nalgebra::DMatrix;
 
 /// What the effects are computed from.
 pub(super) struct Work<'a> {
@@ -238,20 +240,30 @@ impl Work<'_> {
             _ => 0.0,
         };
         let mut effects = Vec::new();
-        if let Some(before) = &baseline.before {
-            let u = before.level_u;
+        // Levels fitted apart err apart; one line through both has errors that move both.
+        let levels = match (&baseline.before, &baseline.after) {
+            (Some(before), Some(after)) if before.level_covariance != 0.0 => {
+                let (b, a, both) = (before.level_u.powi(2), after.level_u.powi(2), before.level_covariance);
+                let dof = before.degrees_of_freedom().min(after.degrees_of_freedom());
+                let directions = propagation::directions(&DMatrix::from_row_slice(2, 2, &[b, both, both, a]));
+                directions.iter().map(|d| ("zero", [d[0], d[1]], dof)).collect()
+            }
+            (before, after) => {
+                let mut apart = Vec::new();
+                apart.extend(before.map(|q| ("zero before", [q.level_u, 0.0], q.degrees_of_freedom())));
+                apart.extend(after.map(|q| ("zero after", [0.0, q.level_u], q.degrees_of_freedom())));
+                apart
+            }
+        };
+        for (source, [before, after], dof) in levels {
+            let course = |t: f64| {
+                let (of_before, of_after) = baseline.sensitivity(t);
+                before * of_before + after * of_after
+            };
             effects.push(Effect {
-                propellant_mass: u * mass_per_newton,
-                shape: Shape::of_estimate(before.degrees_of_freedom()),
-                ..self.zero_effect("zero before", |t| u * baseline.sensitivity(t).0)
-            });
-        }
-        if let Some(after) = &baseline.after {
-            let u = after.level_u;
-            effects.push(Effect {
-                propellant_mass: -u * mass_per_newton,
-                shape: Shape::of_estimate(after.degrees_of_freedom()),
-                ..self.zero_effect("zero after", |t| u * baseline.sensitivity(t).1)
+                propellant_mass: (before - after) * mass_per_newton,
+                shape: Shape::of_estimate(dof),
+                ..self.zero_effect(source, course)
             });
         }
         if self.zero.drift_u_n > 0.0 {

@@ -142,6 +142,9 @@ pub struct Truth {
     pub peak_pressure_pa: Option<f64>,
     /// Absolute, over the action time.
     pub mean_pressure_pa: Option<f64>,
+    /// Throat area times the integral of absolute pressure over the burn time, raised by the share of the impulse outside it, over
+    /// the propellant's mass.
+    pub characteristic_velocity_m_s: Option<f64>,
     /// Over the action time, absolute pressure.
     pub thrust_coefficient: Option<f64>,
     /// First and last thrust above 0.05 % of peak.
@@ -250,6 +253,10 @@ impl Scenario {
             expelled_mass_kg: self.expelled_extra_kg.map(|extra| self.motor.propellant_mass_kg + extra),
             peak_pressure_pa: air.map(|(p, area)| p.air_pressure_pa + peak / area),
             mean_pressure_pa: air.map(|(p, area)| p.air_pressure_pa + action / area / (down10 - up10)),
+            characteristic_velocity_m_s: air.map(|(p, area)| {
+                let integral = p.air_pressure_pa * (down5 - up5) + burn_impulse / area;
+                throat_area(p) * integral * (total / burn_impulse) / self.motor.propellant_mass_kg
+            }),
             thrust_coefficient: air
                 .map(|(p, area)| action / (throat_area(p) * (p.air_pressure_pa * (down10 - up10) + action / area))),
             thrust_start_s: log_time(first),
