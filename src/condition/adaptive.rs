@@ -12,6 +12,11 @@ pub struct Smoothed {
     pub standard_error: Vec<f64>,
 }
 
+/// A lone sample's error is so many times its neighbours'.
+const LONE_ERROR: f64 = 2.5;
+/// Noise throws a sample this many standard deviations out at most.
+const THROWN_BY_NOISE: f64 = 5.0;
+
 /// Half-width of the confidence intervals that must meet, in standard errors.
 const AGREEMENT: f64 = 2.6;
 
@@ -128,7 +133,22 @@ pub fn smooth(data: &[f64], sigma: &[f64], autocorrelation: &[f64], longest: usi
         // The three estimates share their data, so the best of them is what can be claimed.
         standard_error.push(smallest);
     }
+    bridge_lone_samples(&mut value, &mut standard_error, sigma);
     Smoothed { value, standard_error }
+}
+
+/// A sample that noise threw far out agrees with no window that holds it, and would stand as it is between neighbours that are known
+/// far better: it gets their mean. What noise cannot have thrown so far stays.
+fn bridge_lone_samples(value: &mut [f64], standard_error: &mut [f64], sigma: &[f64]) {
+    for i in 1..value.len().saturating_sub(1) {
+        let beside = standard_error[i - 1].max(standard_error[i + 1]);
+        let mean = 0.5 * (value[i - 1] + value[i + 1]);
+        let between = (value[i - 1] - value[i + 1]).abs();
+        let out = (value[i] - mean).abs();
+        if standard_error[i] > LONE_ERROR * beside && out > between && out < THROWN_BY_NOISE * sigma[i] {
+            (value[i], standard_error[i]) = (mean, beside);
+        }
+    }
 }
 
 fn longest_agreeing(

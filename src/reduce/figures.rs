@@ -31,7 +31,7 @@ pub const CRYSTAL_CLOCK: f64 = 1e-4;
 const MEASURABLE: f64 = 0.002;
 
 /// Error of the smoothed curve against the standard error that noise alone leaves in it; by simulated firings.
-pub(super) const SMOOTHING_BIAS: f64 = 3.0;
+pub(super) const SMOOTHING_BIAS: f64 = 4.0;
 /// Standard uncertainty of the foot of a fast rise or fall in sample intervals, and the share of peak per interval from which
 /// on it counts in full; by simulated firings.
 pub(super) const EDGE_SHARE: f64 = 0.15;
