@@ -9,7 +9,7 @@ const WORTH_SHARE: f64 = 0.3;
 fn remedy(source: &str) -> Option<&'static str> {
     Some(match source {
         "calibration fit" => "calibrate with more points",
-        "weights" => "calibrate with better known weights",
+        "weights" => "hang better known weights",
         "gravity" => "give gravity under [site]",
         "air buoyancy" => "calibrate with denser weights",
         "beyond the heaviest weight" => "calibrate up to the peak thrust",
@@ -85,7 +85,7 @@ mod tests {
         assert!((first.half_width_95_if_halved - 2.0 * 0.52f64.sqrt()).abs() < 1e-12);
         assert_eq!(
             first.advice,
-            "calibrate with better known weights: half of this error would leave ± 1.4 instead of ± 2.0 N.s"
+            "hang better known weights: half of this error would leave ± 1.4 instead of ± 2.0 N.s"
         );
         assert!(budget[1].improvement.is_some() && budget[2].improvement.is_none());
     }
