@@ -327,8 +327,8 @@ mod tests {
     fn a_shared_clock_cancels_in_a_mean() {
         let clock = Effect { acts: Acts::StretchesTime(0.003), ..Effect::of("clock") };
         let found = found(false);
-        assert!(both(&found, &[clock.clone()], "average_thrust").iter().all(|u| *u < 1e-9));
-        assert!(both(&found, &[clock], "burn_time").iter().all(|u| (u / 0.009 - 1.0).abs() < 0.02));
+        assert!(both(&found, std::slice::from_ref(&clock), "average_thrust").iter().all(|u| *u < 1e-9));
+        assert!(both(&found, std::slice::from_ref(&clock), "burn_time").iter().all(|u| (u / 0.009 - 1.0).abs() < 0.02));
     }
 
     /// A mass told by the same force as the impulse: their ratio knows nothing of the force.
