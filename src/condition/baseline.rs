@@ -1,6 +1,6 @@
 //! The zero under the thrust: from the quiet record before and after, with the motor's own weight taken along.
 
-use crate::condition::quiet::QuietFit;
+use crate::condition::quiet::{QuietFit, Thermal};
 
 /// Course of the zero through the burst. Forces in N as the calibration reads them.
 #[derive(Debug, Clone, PartialEq)]
@@ -15,6 +15,8 @@ pub struct Baseline {
     pub weight_shift_n: f64,
     /// Part of the shift that goes with time.
     pub drift_n: f64,
+    /// How it goes with time, where that is no straight line.
+    pub thermal: Option<Thermal>,
 }
 
 impl Baseline {
@@ -28,7 +30,7 @@ impl Baseline {
         end_s: f64,
         weight_shift_n: f64,
     ) -> Self {
-        let mut baseline = Baseline { before, after, start_s, end_s, weight_shift_n, drift_n: 0.0 };
+        let mut baseline = Baseline { before, after, start_s, end_s, weight_shift_n, drift_n: 0.0, thermal: None };
         if let Some(shift) = baseline.shift_n() {
             baseline.drift_n = shift - weight_shift_n;
         }
@@ -58,7 +60,11 @@ impl Baseline {
                 } else if time_s >= self.end_s {
                     after.level_at(time_s)
                 } else {
-                    before.level_at(self.start_s) + self.drift_n * x + self.weight_shift_n * fraction
+                    let share = self.thermal.map_or(x, |t| {
+                        let whole = t.at(duration) - t.level;
+                        if whole == 0.0 { x } else { (t.at(x * duration) - t.level) / whole }
+                    });
+                    before.level_at(self.start_s) + self.drift_n * share + self.weight_shift_n * fraction
                 }
             }
             (Some(before), None) => before.level_at(time_s) + self.weight_shift_n * fraction,

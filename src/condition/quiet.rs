@@ -189,6 +189,122 @@ pub fn fit_together(
     Some([at(0), at(1)])
 }
 
+/// A zero that drifts steadily and, from ignition on, by warmth besides.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Thermal {
+    /// Level at ignition.
+    pub level: f64,
+    pub slope_per_s: f64,
+    /// Where the warmth's part ends in the long run, and its time constant.
+    pub amplitude: f64,
+    pub time_constant_s: f64,
+    /// Standard uncertainty of the level at the end of the burst.
+    pub level_after_u: f64,
+}
+
+impl Thermal {
+    /// Course since ignition.
+    pub fn at(&self, since_s: f64) -> f64 {
+        let warmth = if since_s > 0.0 { 1.0 - (-since_s / self.time_constant_s).exp() } else { 0.0 };
+        self.level + self.slope_per_s * since_s + self.amplitude * warmth
+    }
+}
+
+/// Blocks that a quiet stretch is averaged over before the search for a time constant.
+const THERMAL_BLOCKS: usize = 240;
+/// Time constants tried, s: from the first to the last by this factor.
+const TIME_CONSTANTS: (f64, f64, f64) = (0.3, 60.0, 1.25);
+/// The residuals of one line must exceed those of the thermal course by so many variances of a block mean, and those of two lines with
+/// nothing in common must not fall short of them by more than this.
+const THERMAL_EVIDENCE: f64 = 16.0;
+const THERMAL_WORSE: f64 = 6.0;
+
+/// Looks for warmth in two quiet stretches: flat or steadily drifting before ignition, bending after the burn. `step` is added to the
+/// later stretch by known causes. `at_s`: ignition and the end of the burst. `None` where the evidence does not ask for it.
+pub fn fit_thermal(
+    time_s: &[f64],
+    data: &[f64],
+    ranges: [Range<usize>; 2],
+    at_s: [f64; 2],
+    step: f64,
+) -> Option<Thermal> {
+    let mut points: Vec<(f64, f64)> = Vec::new();
+    let mut within = 0.0;
+    let mut own = 0.0;
+    for (range, shift) in ranges.iter().zip([0.0, step]) {
+        let (t, y) = (time_s.get(range.clone())?, data.get(range.clone())?);
+        let size = (t.len() / THERMAL_BLOCKS).max(1);
+        let blocks: Vec<(f64, f64)> = t
+            .chunks_exact(size)
+            .zip(y.chunks_exact(size))
+            .map(|(t, y)| {
+                let n = size as f64;
+                (t.iter().sum::<f64>() / n - at_s[0], y.iter().sum::<f64>() / n - shift)
+            })
+            .collect();
+        let n = blocks.len() as f64;
+        if n < 12.0 {
+            return None;
+        }
+        let (mt, my) = blocks.iter().fold((0.0, 0.0), |(a, b), p| (a + p.0 / n, b + p.1 / n));
+        let (sxx, sxy, syy) = blocks.iter().fold((0.0, 0.0, 0.0), |(a, b, c), p| {
+            (a + (p.0 - mt).powi(2), b + (p.0 - mt) * (p.1 - my), c + (p.1 - my).powi(2))
+        });
+        let rss = (syy - sxy * sxy / sxx).max(0.0);
+        own += rss;
+        // Differences of neighbouring block means, which no slow course shows in.
+        within += blocks.windows(2).map(|w| (w[1].1 - w[0].1).powi(2)).sum::<f64>() / (2.0 * (n - 1.0));
+        points.extend(blocks);
+    }
+    let variance = (0.5 * within).max(f64::MIN_POSITIVE);
+    let solve = |tau: Option<f64>| -> Option<(Vector3<f64>, Matrix3<f64>, f64)> {
+        let (mut normal, mut rhs) = (Matrix3::zeros(), Vector3::zeros());
+        for (x, y) in &points {
+            let warmth = tau.map_or(0.0, |tau| if *x > 0.0 { 1.0 - (-x / tau).exp() } else { 0.0 });
+            let row = Vector3::new(1.0, *x, warmth);
+            normal += row * row.transpose();
+            rhs += row * *y;
+        }
+        if tau.is_none() {
+            normal[(2, 2)] = 1.0;
+        }
+        let inverse = normal.try_inverse()?;
+        let c = inverse * rhs;
+        let rss: f64 = points
+            .iter()
+            .map(|(x, y)| {
+                let warmth = tau.map_or(0.0, |tau| if *x > 0.0 { 1.0 - (-x / tau).exp() } else { 0.0 });
+                (y - c[0] - c[1] * x - c[2] * warmth).powi(2)
+            })
+            .sum();
+        rss.is_finite().then_some((c, inverse, rss))
+    };
+    let (_, _, line) = solve(None)?;
+    let mut best: Option<(f64, Vector3<f64>, Matrix3<f64>, f64)> = None;
+    let mut tau = TIME_CONSTANTS.0;
+    while tau < TIME_CONSTANTS.1 {
+        if let Some((c, inverse, rss)) = solve(Some(tau))
+            && best.as_ref().is_none_or(|b| rss < b.3)
+        {
+            best = Some((tau, c, inverse, rss));
+        }
+        tau *= TIME_CONSTANTS.2;
+    }
+    let (tau, c, inverse, rss) = best?;
+    if line - rss < THERMAL_EVIDENCE * variance || rss - own > THERMAL_WORSE * variance {
+        return None;
+    }
+    let x = at_s[1] - at_s[0];
+    let row = Vector3::new(1.0, x, 1.0 - (-x / tau).exp());
+    Some(Thermal {
+        level: c[0],
+        slope_per_s: c[1],
+        amplitude: c[2],
+        time_constant_s: tau,
+        level_after_u: ((row.transpose() * inverse * row)[0] * variance).max(0.0).sqrt(),
+    })
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -237,6 +353,23 @@ mod tests {
             assert!((b.level + 1.35).abs() < 4.0 * b.level_u && b.level_u < 0.03, "{step:?} {b:?}");
         }
         assert_eq!(fit_together(&t, &y, [0..400, 1300..2000], [4.0, 13.0], Some(0.0)), None);
+    }
+
+    #[test]
+    fn warmth_after_ignition_is_told_from_a_steady_drift() {
+        let t: Vec<f64> = (0..3000).map(|i| i as f64 * 0.01).collect();
+        let warm = |t: f64| if t > 5.0 { 4.0 * (1.0 - (-(t - 5.0) / 3.0).exp()) } else { 0.0 };
+        let data = |seed: u64, size: f64| -> Vec<f64> {
+            noise(3000, seed).iter().zip(&t).map(|(z, t)| 1.0 + 0.05 * t + size * warm(*t) + 0.2 * z).collect()
+        };
+        let ranges = || [0..500, 800..3000];
+        let found = fit_thermal(&t, &data(4, 1.0), ranges(), [5.0, 8.0], 0.0).expect("warmth");
+        // At 8 s: 1 + 0.4 + 4 (1 − e⁻¹).
+        assert!((found.at(3.0) - 3.928).abs() < 0.1, "{found:?} {}", found.at(3.0));
+        assert!((found.time_constant_s / 3.0).ln().abs() < 0.5, "{found:?}");
+        for seed in 0..20 {
+            assert_eq!(fit_thermal(&t, &data(seed, 0.0), ranges(), [5.0, 8.0], 0.0), None, "{seed}");
+        }
     }
 
     #[test]

@@ -208,9 +208,10 @@ fn zeros(c: &mut Checks, record: &Record<'_>, zero: &Zero, figures: &Figures) {
             "baseline_shift",
             status,
             format!(
-                "the zero moved by {:.3} N {what} ({} of peak): taken as steady drift, uncertainty widened",
+                "the zero moved by {:.3} N {what} ({} of peak): taken as {}, uncertainty widened",
                 zero.drift_n,
-                percent(share)
+                percent(share),
+                zero.course()
             ),
         );
     } else {

@@ -28,12 +28,30 @@ pub struct Zero {
     pub drift_u_n: f64,
 }
 
+impl Zero {
+    /// How the drift was taken to go, in words.
+    pub fn course(&self) -> String {
+        match self.baseline.thermal {
+            Some(warm) => format!(
+                "steady drift of {:.4} N/s and warmth growing after ignition by {:.3} N with a time constant of {:.1} s (the quiet record bends after the burn and not before)",
+                warm.slope_per_s, warm.amplitude, warm.time_constant_s
+            ),
+            None => "steady drift".to_string(),
+        }
+    }
+}
+
 /// Quiet record used on either side, at most so many burst lengths, and at least so many seconds where there are so many.
 const BURSTS_OF_QUIET: f64 = 2.0;
 const LEAST_QUIET_S: f64 = 3.0;
 
 /// Drift through the burst that a zero known on one side only is allowed for, at most, as a share of peak.
 const ONE_SIDED_SHARE: f64 = 0.001;
+
+/// A drift is used on a stand whose weight shift is to be found with it from this many standard errors on.
+const SLOPE_SEEN: f64 = 3.0;
+/// What of a slope's standard error over the burst may hide in either level where no drift is seen.
+const HIDDEN_DRIFT: f64 = 0.35;
 
 /// Rounds of zero, impulse and weight until they agree.
 const WEIGHT_ROUNDS: usize = 6;
@@ -55,6 +73,24 @@ pub fn correct(record: &Record<'_>) -> Zero {
     };
     let weighed = record.inputs.run.motor.propellant_mass_kg;
     let (before_fit, after_fit) = levels(record, &before, &after, [start_s, end_s], downward);
+    let known_step = known_step(record, downward);
+    let thermal = match (&before, &after, known_step) {
+        (Some(b), Some(a), Some(step)) => {
+            quiet::fit_thermal(time_s, &record.force_n, [b.clone(), a.clone()], [start_s, end_s], step)
+        }
+        _ => None,
+    };
+    let (before_fit, after_fit) = match (thermal, before_fit, after_fit) {
+        (Some(warm), Some(b), Some(a)) => (
+            Some(QuietFit { level: warm.level, slope_per_s: warm.slope_per_s, ..b }),
+            Some(QuietFit {
+                level: warm.at(end_s - start_s) + known_step.unwrap_or(0.0),
+                level_u: warm.level_after_u.max(a.level_u),
+                ..a
+            }),
+        ),
+        _ => (before_fit, after_fit),
+    };
     let plain = Baseline::new(before_fit, after_fit, start_s, end_s, 0.0);
     let shift = plain.shift_n();
     let shift_u = plain.shift_u_n().unwrap_or(0.0);
@@ -69,7 +105,8 @@ pub fn correct(record: &Record<'_>) -> Zero {
         let expected = weighed.map_or(0.0, |m| m.value * record.gravity.value_m_s2);
         wrong_way = shift * downward < -3.0 * shift_u && shift.abs() > 0.2 * expected;
     }
-    let baseline = Baseline::new(before_fit, after_fit, start_s, end_s, weight_shift_n);
+    let mut baseline = Baseline::new(before_fit, after_fit, start_s, end_s, weight_shift_n);
+    baseline.thermal = thermal;
     let drift_n = baseline.drift_n;
     let excess = (drift_n * drift_n - shift_u * shift_u).max(0.0).sqrt();
     // With a zero on one side only, whatever slope its stretch could hide goes on through the burst, within reason.
@@ -77,7 +114,17 @@ pub fn correct(record: &Record<'_>) -> Zero {
         (Some(q), None) | (None, Some(q)) => (0.5 * q.slope_u * burst_s).min(ONE_SIDED_SHARE * burn.peak.abs()),
         _ => 0.0,
     };
-    let drift_u_n = (excess / 12f64.sqrt()).hypot(one_sided);
+    // A straight line between the ends would be off by this in the mean; how much of that the choice of the bent course leaves open
+    // nobody measured: a third.
+    let course = match thermal {
+        Some(warm) => {
+            let length = end_s - start_s;
+            let mean = (0..=50).map(|k| warm.at(length * f64::from(k) / 50.0)).sum::<f64>() / 51.0;
+            (mean - 0.5 * (warm.level + warm.at(length))).abs() / 3.0
+        }
+        None => excess / 12f64.sqrt(),
+    };
+    let drift_u_n = course.hypot(one_sided);
     let shift_mass_kg = match (downward == 0.0, shift) {
         (false, Some(shift)) if shift * downward > 0.0 => {
             Some((shift.abs() / record.gravity.value_m_s2, shift_u / record.gravity.value_m_s2))
@@ -94,6 +141,16 @@ pub fn correct(record: &Record<'_>) -> Zero {
     Zero { baseline, burst, thrust_n, window, shift_mass_kg, wrong_way, drift_n, drift_u_n }
 }
 
+/// By how much the zero steps for known reasons: not at all on a horizontal stand, by the propellant's weight on a vertical one where
+/// it was weighed.
+fn known_step(record: &Record<'_>, downward: f64) -> Option<f64> {
+    match (downward == 0.0, record.inputs.run.motor.propellant_mass_kg) {
+        (true, _) => Some(0.0),
+        (false, Some(mass)) => Some(downward * mass.value * record.gravity.value_m_s2),
+        (false, None) => None,
+    }
+}
+
 /// Zero at both ends of the burst: one line through both quiet stretches where that explains them, else a line each.
 fn levels(
     record: &Record<'_>,
@@ -103,17 +160,25 @@ fn levels(
     downward: f64,
 ) -> (Option<QuietFit>, Option<QuietFit>) {
     let (t, f) = (&record.time_s, &record.force_n);
-    let weighed = record.inputs.run.motor.propellant_mass_kg;
-    let step = match (downward == 0.0, weighed) {
-        (true, _) => Some(0.0),
-        (false, Some(mass)) => Some(downward * mass.value * record.gravity.value_m_s2),
-        (false, None) => None,
-    };
+    let step = known_step(record, downward);
     match (before, after) {
-        (Some(b), Some(a)) => match quiet::fit_together(t, f, [b.clone(), a.clone()], at_s, step) {
-            Some([b, a]) => (Some(b), Some(a)),
-            None => (quiet::fit(t, f, b.clone(), at_s[0]), quiet::fit(t, f, a.clone(), at_s[1])),
-        },
+        (Some(b_range), Some(a_range)) => {
+            match quiet::fit_together(t, f, [b_range.clone(), a_range.clone()], at_s, step) {
+                Some([b, a]) if step.is_none() && b.slope_per_s.abs() < SLOPE_SEEN * b.slope_u => {
+                    // No drift to be seen: the weight that left is the difference of two plain means, and what drift may hide in it counts.
+                    let plain = |r: &Range<usize>, q: QuietFit, at: f64, hidden: f64| {
+                        let n = r.len().max(1) as f64;
+                        let mean = f[r.clone()].iter().sum::<f64>() / n;
+                        let noise = (q.low_frequency_density / q.duration_s.max(f64::MIN_POSITIVE)).sqrt();
+                        QuietFit { at_s: at, level: mean, slope_per_s: 0.0, level_u: noise.hypot(hidden), ..q }
+                    };
+                    let hidden = HIDDEN_DRIFT * b.slope_u * (at_s[1] - at_s[0]);
+                    (Some(plain(b_range, b, at_s[0], hidden)), Some(plain(a_range, a, at_s[1], hidden)))
+                }
+                Some([b, a]) => (Some(b), Some(a)),
+                None => (quiet::fit(t, f, b_range.clone(), at_s[0]), quiet::fit(t, f, a_range.clone(), at_s[1])),
+            }
+        }
         // A zero known on one side is carried through the burst: only a plain slope is carried with it.
         (b, a) => {
             let alone = |r: &Option<Range<usize>>, at: f64| {
