@@ -218,6 +218,8 @@ const TIME_CONSTANTS: (f64, f64, f64) = (0.3, 60.0, 1.25);
 /// nothing in common must not fall short of them by more than this.
 const THERMAL_EVIDENCE: f64 = 16.0;
 const THERMAL_WORSE: f64 = 6.0;
+/// The bend itself must be seen: a plain step must leave so many variances more.
+const BEND_EVIDENCE: f64 = 9.0;
 
 /// Looks for warmth in two quiet stretches: flat or steadily drifting before ignition, bending after the burn. `step` is added to the
 /// later stretch by known causes. `at_s`: ignition and the end of the burst. `None` where the evidence does not ask for it.
@@ -291,7 +293,12 @@ pub fn fit_thermal(
         tau *= TIME_CONSTANTS.2;
     }
     let (tau, c, inverse, rss) = best?;
-    if line - rss < THERMAL_EVIDENCE * variance || rss - own > THERMAL_WORSE * variance {
+    // Warmth that has come before the quiet record begins again is no more than a step somewhere in between.
+    let (_, _, stepped) = solve(Some(1e-6))?;
+    if line - rss < THERMAL_EVIDENCE * variance
+        || stepped - rss < BEND_EVIDENCE * variance
+        || rss - own > THERMAL_WORSE * variance
+    {
         return None;
     }
     let x = at_s[1] - at_s[0];

@@ -53,6 +53,9 @@ const SLOPE_SEEN: f64 = 3.0;
 /// What of a slope's standard error over the burst may hide in either level where no drift is seen.
 const HIDDEN_DRIFT: f64 = 0.35;
 
+/// Time constants below this share of the burst are a tail's where the zero seems to fall.
+const TAIL_SHARE: f64 = 0.5;
+
 /// Rounds of zero, impulse and weight until they agree.
 const WEIGHT_ROUNDS: usize = 6;
 
@@ -77,6 +80,8 @@ pub fn correct(record: &Record<'_>) -> Zero {
     let thermal = match (&before, &after, known_step) {
         (Some(b), Some(a), Some(step)) => {
             quiet::fit_thermal(time_s, &record.force_n, [b.clone(), a.clone()], [start_s, end_s], step)
+                // A zero that comes down soon after the burn is the tail of the thrust fading.
+                .filter(|warm| warm.amplitude > 0.0 || warm.time_constant_s > TAIL_SHARE * burst_s)
         }
         _ => None,
     };
