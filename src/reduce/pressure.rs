@@ -1,5 +1,8 @@
 //! The chamber-pressure channel.
 
+mod levels;
+
+use self::levels::{outside, rest};
 use super::curve::Curve;
 use super::figures::Ends;
 use super::steady::{self, Course};
@@ -15,27 +18,10 @@ use crate::problem::Problem;
 use crate::quantity::Measured;
 use crate::run::{PressureReference, Role};
 use crate::uncertainty::distribution::Shape;
-use crate::uncertainty::effects::{Acts, Effect};
+use crate::uncertainty::effects::Effect;
 
-/// Mean air pressure at sea level, Pa, and how it falls with height in the troposphere (ISO 2533:1975, standard atmosphere; from
-/// memory).
-const SEA_LEVEL_PA: f64 = 101_325.0;
-const LAPSE_PER_M: f64 = 2.255_77e-5;
-const LAPSE_EXPONENT: f64 = 5.255_88;
-/// How far the weather may take the air pressure from that, limits, Pa (common practice, no source).
-const WEATHER_PA: f64 = 3000.0;
-/// A barometer read to a hectopascal: limits of a stated air pressure without limits, Pa.
-const BAROMETER_PA: f64 = 100.0;
-/// Air pressures between which people live, Pa: a stated one outside is worth a look.
-const LIVEABLE_PA: std::ops::Range<f64> = 45_000.0..110_000.0;
-/// Quiet samples below which the zero counts as not seen.
-const LEAST_QUIET: usize = 8;
 /// Samples before the burst at which the pressure may already rise.
 const BEFORE_BURST: usize = 3;
-/// Parts of a quiet stretch whose means show what slow noise does to its level.
-const BLOCKS: usize = 10;
-/// Standard errors from which on a shift of the zero counts as seen.
-const SEEN: f64 = 3.0;
 /// The pressure must rise above its noise by this to be one.
 const ABOVE_NOISE: f64 = 10.0;
 
@@ -64,90 +50,6 @@ pub(super) struct Pressure {
     pub clipped: bool,
     /// The thrust was.
     pub thrust_clipped: bool,
-}
-
-/// Air pressure outside the motor, Pa, half its limits' width, and where it came from.
-fn outside(record: &Record<'_>) -> (f64, f64, String) {
-    let run = &record.inputs.run;
-    if let Some(stated) = run.conditions.get("air_pressure") {
-        let get = |key: &str| stated.get(key).and_then(serde_json::Value::as_f64);
-        let pressure = stated.get("unit").and_then(serde_json::Value::as_str) == Some("Pa");
-        if let Some(value) = get("value").filter(|v| pressure && *v > 0.0) {
-            let stated_limits = get("standard_uncertainty").map(|u| u * 3f64.sqrt());
-            let limits = stated_limits.unwrap_or(BAROMETER_PA);
-            let assumed = if stated_limits.is_some() { "" } else { " (limits assumed)" };
-            let odd = if LIVEABLE_PA.contains(&value) { "" } else { ", an unlikely one: check its unit" };
-            let words = format!(
-                "air pressure {:.1} hPa ± {:.1} hPa{assumed} as stated under [conditions]{odd}",
-                value / 100.0,
-                limits / 100.0
-            );
-            return (value, limits, words);
-        }
-    }
-    let height = run.site.height_m.map_or(0.0, |h| h.value);
-    let value = SEA_LEVEL_PA * (1.0 - LAPSE_PER_M * height).max(0.0).powf(LAPSE_EXPONENT);
-    let words = format!(
-        "no air_pressure in a unit of pressure under [conditions]: {:.0} hPa ± {:.0} hPa taken from the standard atmosphere at {}",
-        value / 100.0,
-        WEATHER_PA / 100.0,
-        run.site
-            .height_m
-            .map_or("sea level, since [site] gives no height".to_string(), |h| format!("{:.0} m", h.value))
-    );
-    (value, WEATHER_PA, words)
-}
-
-/// Level of a quiet stretch with its standard uncertainty, and the standard deviation of single samples.
-#[derive(Debug, Clone, Copy)]
-struct Level {
-    pa: f64,
-    u_pa: f64,
-    sample_pa: f64,
-}
-
-impl Level {
-    fn of(values: &[f64]) -> Option<Level> {
-        if values.len() < LEAST_QUIET {
-            return None;
-        }
-        let mean = |v: &[f64]| v.iter().sum::<f64>() / v.len() as f64;
-        let deviation = |v: &[f64], about: f64| {
-            (v.iter().map(|x| (x - about).powi(2)).sum::<f64>() / (v.len() - 1).max(1) as f64).sqrt()
-        };
-        let pa = mean(values);
-        let sample_pa = deviation(values, pa);
-        let white = sample_pa / (values.len() as f64).sqrt();
-        // Slow noise moves the mean by more than white noise of the same size would.
-        let block = values.len() / BLOCKS;
-        let slow = if block >= LEAST_QUIET {
-            let means: Vec<f64> = values.chunks_exact(block).map(mean).collect();
-            deviation(&means, pa) / (means.len() as f64).sqrt()
-        } else {
-            0.0
-        };
-        Some(Level { pa, u_pa: white.max(slow), sample_pa })
-    }
-}
-
-/// The channel at rest on either side of the burst, readings in Pa on its own scale.
-struct Rest {
-    before: Option<Level>,
-    /// Shift of the zero across the burst where one is seen, Pa.
-    drift_pa: f64,
-}
-
-/// `burst`: samples of the burst in the window.
-fn rest(reading_pa: &[f64], burst: std::ops::Range<usize>) -> Rest {
-    let before = Level::of(&reading_pa[..burst.start.min(reading_pa.len())]);
-    // Gas may still leave the chamber just after the burst: the later half of what follows it.
-    let left = reading_pa.len().saturating_sub(burst.end);
-    let after = Level::of(&reading_pa[reading_pa.len() - left / 2..]);
-    let drift_pa = match (before, after) {
-        (Some(b), Some(a)) if (a.pa - b.pa).abs() > SEEN * a.u_pa.hypot(b.u_pa) => a.pa - b.pa,
-        _ => 0.0,
-    };
-    Rest { before, drift_pa }
 }
 
 /// What the figures need to know of thrust.
@@ -453,59 +355,44 @@ fn throat(record: &Record<'_>, effects: &mut Vec<Effect>, findings: &mut Vec<Str
     Some(Throat { area_m2, known, growth })
 }
 
-/// Makes a figure of its key, value, unit, effects, and whether its scale is known.
-pub(super) type MakeFigure<'a> = dyn FnMut(&str, f64, &str, &dyn Fn(&Effect) -> f64, bool) -> Figure + 'a;
+/// Makes a figure of its key, value and unit, and whether its scale is known.
+pub(super) type MakeFigure<'a> = dyn FnMut(&'static str, f64, &str, bool) -> Figure + 'a;
 
 impl Pressure {
-    /// Puts the figures into `q` and the amounts they are made of into `a`. `mass`: propellant in kg, and whether its error is known.
-    pub fn figures(
-        &self,
-        q: &mut Quantities,
-        a: &mut Effect,
-        web_thickness_m: Option<f64>,
-        mass: Option<(f64, bool)>,
-        thrust_known: bool,
-        figure: &mut MakeFigure<'_>,
-    ) {
+    /// Puts what the figures are made of into `a`.
+    pub fn amounts(&self, a: &mut Effect, web_thickness_m: Option<f64>) {
         a.peak_pressure = self.peak_pa;
         a.pressure_action = self.action_integral_pa_s;
         a.pressure_total = self.total_integral_pa_s;
         a.throat_area = self.throat_area_m2.unwrap_or(0.0);
         a.web_time = self.web_s.unwrap_or(0.0);
         a.web_thickness = web_thickness_m.unwrap_or(0.0);
-        let a = &*a;
-        let clock = |e: &Effect| if let Acts::StretchesTime(r) = e.acts { r } else { 0.0 };
-        q.peak_pressure = Some(figure("peak_pressure", a.peak_pressure, "Pa", &|e| e.peak_pressure, self.known));
-        let mean = a.pressure_action / a.action_time;
-        // The clock stretches the integral and the time alike.
-        let effect = |e: &Effect| {
-            let time = if clock(e) == 0.0 { e.action_time / a.action_time } else { 0.0 };
-            mean * (e.pressure_action / a.pressure_action - time)
-        };
-        q.mean_pressure = Some(figure("mean_pressure", mean, "Pa", &effect, self.known));
+    }
+
+    /// Puts the figures made of the amounts `a` into `q`. `mass`: propellant in kg, and whether its error is known.
+    pub fn figures(
+        &self,
+        q: &mut Quantities,
+        a: &Effect,
+        mass: Option<(f64, bool)>,
+        thrust_known: bool,
+        figure: &mut MakeFigure<'_>,
+    ) {
+        q.peak_pressure = Some(figure("peak_pressure", a.peak_pressure, "Pa", self.known));
+        q.mean_pressure = Some(figure("mean_pressure", a.pressure_action / a.action_time, "Pa", self.known));
         if let (Some(area), Some((kg, known))) = (self.throat_area_m2, mass) {
             let c = pressure::characteristic_velocity(area, a.pressure_total, kg);
-            let effect = |e: &Effect| {
-                let shares = e.throat_area / area + e.pressure_total / a.pressure_total - e.propellant_mass / kg;
-                c * (shares + clock(e))
-            };
             let all_known = self.known && self.throat_known && known;
-            q.characteristic_velocity = Some(figure("characteristic_velocity", c, "m/s", &effect, all_known));
+            q.characteristic_velocity = Some(figure("characteristic_velocity", c, "m/s", all_known));
         }
         // With both cut off, nothing is known of their quotient.
         if let Some(area) = self.throat_area_m2.filter(|_| !(self.clipped && self.thrust_clipped)) {
             let c = pressure::thrust_coefficient(a.action_impulse, area, a.pressure_action);
-            let effect = |e: &Effect| {
-                let impulse = if clock(e) == 0.0 { e.action_impulse / a.action_impulse } else { 0.0 };
-                c * (impulse - e.throat_area / area - e.pressure_action / a.pressure_action)
-            };
             let all_known = self.known && self.throat_known && thrust_known;
-            q.thrust_coefficient = Some(figure("thrust_coefficient", c, "1", &effect, all_known));
+            q.thrust_coefficient = Some(figure("thrust_coefficient", c, "1", all_known));
         }
-        if let (Some(web), Some(time)) = (web_thickness_m, self.web_s) {
-            let rate = web / time;
-            let effect = |e: &Effect| rate * (e.web_thickness / web - e.web_time / time - clock(e));
-            q.burn_rate = Some(figure("burn_rate", rate, "m/s", &effect, self.web_known));
+        if let (true, Some(time)) = (a.web_thickness > 0.0, self.web_s) {
+            q.burn_rate = Some(figure("burn_rate", a.web_thickness / time, "m/s", self.web_known));
         }
         let bound = |figure: &mut Option<Figure>, side: &str| {
             if let Some(figure) = figure {

@@ -87,10 +87,11 @@ pub fn correct(record: &Record<'_>) -> Zero {
     };
     let (before_fit, after_fit) = match (thermal, before_fit, after_fit) {
         (Some(warm), Some(b), Some(a)) => (
-            Some(QuietFit { level: warm.level, slope_per_s: warm.slope_per_s, ..b }),
+            Some(QuietFit { level: warm.level, slope_per_s: warm.slope_per_s, level_covariance: 0.0, ..b }),
             Some(QuietFit {
                 level: warm.at(end_s - start_s) + known_step.unwrap_or(0.0),
                 level_u: warm.level_after_u.max(a.level_u),
+                level_covariance: 0.0,
                 ..a
             }),
         ),
@@ -175,7 +176,14 @@ fn levels(
                         let n = r.len().max(1) as f64;
                         let mean = f[r.clone()].iter().sum::<f64>() / n;
                         let noise = (q.low_frequency_density / q.duration_s.max(f64::MIN_POSITIVE)).sqrt();
-                        QuietFit { at_s: at, level: mean, slope_per_s: 0.0, level_u: noise.hypot(hidden), ..q }
+                        QuietFit {
+                            at_s: at,
+                            level: mean,
+                            slope_per_s: 0.0,
+                            level_u: noise.hypot(hidden),
+                            level_covariance: 0.0,
+                            ..q
+                        }
                     };
                     let hidden = HIDDEN_DRIFT * b.slope_u * (at_s[1] - at_s[0]);
                     (Some(plain(b_range, b, at_s[0], hidden)), Some(plain(a_range, a, at_s[1], hidden)))

@@ -1,7 +1,5 @@
 //! What to do about a check that did not pass, and the cautions every report carries.
 
-use crate::firing::BudgetLine;
-
 /// One sentence of advice for a check of the contract.
 pub fn for_check(id: &str) -> Option<&'static str> {
     Some(match id {
@@ -25,49 +23,6 @@ pub fn for_check(id: &str) -> Option<&'static str> {
         _ => return None,
     })
 }
-
-/// What makes a source of uncertainty smaller.
-fn for_source(source: &str) -> Option<&'static str> {
-    Some(match source {
-        "weights" => "better known calibration weights",
-        "calibration fit" => "more calibration points, up and down",
-        "beyond the heaviest weight" => "calibration weights up to the peak, on the side the thrust acts",
-        "gravity" => "gravity of the site: give latitude and height",
-        "stated accuracy" => "a calibration with weights in place of a stated accuracy",
-        "force ratio" => "a check load that measures the lever",
-        "clock" => "a better known clock: state `clock_tolerance`",
-        "noise" | "noise at the peak" => "a quieter cell: shield it, sample faster",
-        "zero before" => "a longer quiet record before ignition",
-        "zero after" => "a longer quiet record after the burn",
-        "course of the zero's drift" => "a steadier zero: keep heat from the cell, tighten the mounting",
-        "interval ends" | "sampling" => "a faster logger",
-        "tail beyond the record" => "a record that runs on until the thrust is gone",
-        "propellant mass" => "a finer scale for the propellant",
-        "pressure scale" => "a calibrated pressure transducer",
-        "throat diameter" | "wear of the throat" => "a better measured throat, before and after",
-        "air pressure" => "the air pressure of the day under [conditions]",
-        "zero of the pressure" | "course of the pressure's zero" => {
-            "a longer quiet record and a steadier pressure transducer"
-        }
-        "noise of the pressure" | "noise at the highest pressure" => "a quieter pressure channel",
-        "end of the web" => "a faster logger; a rounded knee stays uncertain",
-        "web thickness" => "a better measured web",
-        _ => return None,
-    })
-}
-
-/// What would narrow a figure's interval most, with what halving that source would make of it: (source's share of the variance, what
-/// to do, factor that is left of the interval). `None` where no source stands out or nothing can be advised.
-pub fn first_to_improve(budget: &[BudgetLine]) -> Option<(f64, &'static str, f64)> {
-    let largest = budget.iter().max_by(|a, b| a.share.total_cmp(&b.share))?;
-    let advice = for_source(&largest.source)?;
-    // Half of one of independent parts: the variance loses three quarters of its share.
-    let left = (1.0 - 0.75 * largest.share).sqrt();
-    (largest.share > LEAST_SHARE).then_some((largest.share, advice, left))
-}
-
-/// A source of less than this share of the variance is not worth naming alone.
-const LEAST_SHARE: f64 = 0.3;
 
 /// The short caution of the summary.
 pub const SHORT_CAUTION: [&str; 2] = [
@@ -97,16 +52,6 @@ mod tests {
             assert!(for_check(id).is_some(), "{id}");
         }
         assert_eq!(for_check("no_such_check"), None);
-    }
-
-    #[test]
-    fn the_largest_source_comes_first_and_half_of_it_is_worked_out() {
-        let line = |source: &str, share: f64| BudgetLine { source: source.into(), standard_uncertainty: 1.0, share };
-        let found = first_to_improve(&[line("noise", 0.2), line("weights", 0.8)]).expect("advice");
-        // 1 - 0.75 of 0.8 is 0.4.
-        assert!(found.1.contains("weights") && (found.2 - 0.4f64.sqrt()).abs() < 1e-12);
-        assert_eq!(first_to_improve(&[line("noise", 0.25), line("clock", 0.25), line("weights", 0.25)]), None);
-        assert_eq!(first_to_improve(&[]), None);
     }
 
     #[test]

@@ -16,7 +16,7 @@ pub struct View {
 
 const WIDTH: usize = 80;
 /// Checks beyond this many that are only cautions are counted, so that the summary fits on a screen.
-const MOST_CAUTIONS: usize = 4;
+const MOST_CAUTIONS: usize = 3;
 /// With more cautions than this the advice on them is left to the page, for the same reason.
 const MOST_ADVISED: usize = 2;
 
@@ -53,7 +53,7 @@ pub fn summary(firing: &Firing, view: View, files: Option<(&Path, &[&str])>) -> 
     let mut lines = Vec::new();
     heading(firing, view, &mut lines);
     figures(firing, view, &mut lines);
-    improvement(firing, &mut lines);
+    improvement(firing, view, &mut lines);
     checks(firing, view, &mut lines);
     if let Some((folder, names)) = files {
         lines.push(String::new());
@@ -119,22 +119,6 @@ fn heading(firing: &Firing, view: View, lines: &mut Vec<String>) {
     }
 }
 
-/// What would narrow the total impulse most.
-fn improvement(firing: &Firing, lines: &mut Vec<String>) {
-    let budget = firing.uncertainty_budget.get("total_impulse").map(Vec::as_slice).unwrap_or_default();
-    if let Some((share, what, left)) = advice::first_to_improve(budget) {
-        lines.extend(wrapped(
-            &format!(
-                "narrower first by {what} ({} of the variance of total impulse; half of it leaves {} of ±)",
-                percent(share),
-                percent(left)
-            ),
-            "  ",
-            "    ",
-        ));
-    }
-}
-
 fn figures(firing: &Firing, view: View, lines: &mut Vec<String>) {
     let mut without_interval = false;
     for (place, entry) in named(&firing.quantities).into_iter().enumerate() {
@@ -183,6 +167,24 @@ fn estimated(figure: &Figure, estimate: &Estimate, view: View) -> String {
     };
     let basis = estimate.method.split(':').next().unwrap_or_default();
     format!("estimate, not measured: {} ({})", words(&shown, view.units).line(), plain(basis))
+}
+
+/// What would narrow the interval of the total impulse most; of the burn time where the impulse has none.
+fn improvement(firing: &Firing, view: View, lines: &mut Vec<String>) {
+    let best = named(&firing.quantities)
+        .into_iter()
+        .filter(|entry| matches!(entry.key, "total_impulse" | "burn_time"))
+        .find_map(|entry| {
+            let first = firing.uncertainty_budget.get(entry.key)?.first()?.improvement.as_ref()?;
+            entry.figure.map(|figure| (figure, first))
+        });
+    if let Some((figure, improvement)) = best {
+        let half = improvement.half_width_95_if_halved;
+        let halved = Figure { interval_95: Some([figure.value - half, figure.value + half]), ..figure.clone() };
+        let halved = words(&halved, view.units);
+        let text = format!("{}; half that error: ± {} {}", plain(&improvement.remedy), halved.half_width, halved.unit);
+        lines.extend(wrapped(&text, "  to improve first: ", "  "));
+    }
 }
 
 fn checks(firing: &Firing, view: View, lines: &mut Vec<String>) {
@@ -269,6 +271,7 @@ mod tests {
         assert!(order.windows(2).all(|pair| place(pair[0]) < place(pair[1])), "{text}");
         assert!(!text.contains("sampling"), "checks that passed are only counted");
         assert!(text.contains("95 %"));
+        assert!(text.contains("to improve first: use better weights; half that error: ± 2.3 N·s"), "{text}");
         if let Ok(folder) = std::env::var("BURNTALLY_TEST_PICTURES") {
             std::fs::write(Path::new(&folder).join("summary.txt"), &text).unwrap();
         }
