@@ -250,7 +250,7 @@ pub(crate) mod tests {
             .collect();
         let table = table(&opened);
         assert_eq!(table["check_load"][0]["mass"].as_str(), Some("10 kg"));
-        assert_eq!(table["motor"]["web_thickness"].as_str(), Some("11 mm"));
+        assert_eq!(table["motor"]["web_thickness"].as_str(), Some("11.0 ± 0.1 mm"));
     }
 
     #[test]

@@ -70,6 +70,9 @@ pub(super) fn judge(course: &Course<'_>) -> Option<(Verdict, f64)> {
         slices.iter().map(|(t, f, p)| (*t, (f - intercept) / p / grown(*t))).collect()
     };
     let plain = ratios(0.0);
+    // Shares are of thrust over pressure as it is: an intercept would make every ratio larger and its change look smaller.
+    let whole = plain.iter().map(|r| r.1).sum::<f64>() / n;
+    let spread = |ratios: &[(f64, f64)]| range(ratios) / whole.abs();
     if spread(&plain) < STEADY {
         return Some((Verdict::Steady(spread(&plain)), thrust / pressure));
     }
@@ -81,17 +84,17 @@ pub(super) fn judge(course: &Course<'_>) -> Option<(Verdict, f64)> {
     if spread(&least) < STEADY {
         return Some((Verdict::ByPressure(spread(&plain)), thrust / pressure));
     }
-    Some((step_or_drift(&least), thrust / pressure))
+    Some((step_or_drift(&least, whole), thrust / pressure))
 }
 
-/// Highest less lowest, as a share of the mean.
-fn spread(ratios: &[(f64, f64)]) -> f64 {
-    let (low, high, sum) =
-        ratios.iter().fold((f64::INFINITY, f64::NEG_INFINITY, 0.0), |(l, h, s), r| (l.min(r.1), h.max(r.1), s + r.1));
-    (high - low) / (sum / ratios.len() as f64).abs()
+/// Highest less lowest.
+fn range(ratios: &[(f64, f64)]) -> f64 {
+    let (low, high) = ratios.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), r| (l.min(r.1), h.max(r.1)));
+    high - low
 }
 
-fn step_or_drift(ratios: &[(f64, f64)]) -> Verdict {
+/// `whole`: mean of thrust over pressure, of which shares are given.
+fn step_or_drift(ratios: &[(f64, f64)], whole: f64) -> Verdict {
     let mean = |r: &[(f64, f64)]| r.iter().map(|x| x.1).sum::<f64>() / r.len() as f64;
     let squares = |r: &[(f64, f64)]| r.iter().map(|x| (x.1 - mean(r)).powi(2)).sum::<f64>();
     let n = ratios.len() as f64;
@@ -106,9 +109,9 @@ fn step_or_drift(ratios: &[(f64, f64)]) -> Verdict {
     match step {
         Some((left, k)) if left < STEP_EVIDENCE * around_line => {
             let at = 0.5 * (ratios[k - 1].0 + ratios[k].0);
-            Verdict::Steps(mean(&ratios[k..]) / mean(&ratios[..k]) - 1.0, at)
+            Verdict::Steps((mean(&ratios[k..]) - mean(&ratios[..k])) / (whole + mean(&ratios[..k]) - v), at)
         }
-        _ => Verdict::Drifts(slope * span / (v - 0.5 * slope * span)),
+        _ => Verdict::Drifts(slope * span / (whole - 0.5 * slope * span)),
     }
 }
 
@@ -175,8 +178,7 @@ mod tests {
     #[test]
     fn a_drift_and_a_step_are_told_apart_and_sized() {
         let drift = verdict(0.0, |x, p| AREA * (1.0 + 0.1 * x) * p, |_| 3e6);
-        // Between the middles of the first and last of eight slices over 90 % of the burn: 0.7875 of it, less a share for what
-        // the allowed intercept takes up (none at even pressure).
+        // Between the middles of the first and last of eight slices over 90 % of the burn: 0.7875 of it, of 10 %.
         assert!(matches!(drift, Verdict::Drifts(by) if (by - 0.0782).abs() < 0.004), "{drift:?}");
         let step = verdict(0.0, |x, p| if x > 0.6 { 0.88 * AREA * p } else { AREA * p }, |_| 3e6);
         // The step falls inside a slice: its size is blurred by a part of one of three or five.

@@ -107,7 +107,7 @@ mod tests {
             .chain(text.split("=> (\"").skip(1))
             .chain(text.split("relative(\"").skip(1))
             .chain(text.split("let source = \"").skip(1))
-            .chain(text.split("level_everywhere(\"").skip(1))
+            .chain(text.split("level_effect(\"").skip(1))
             .filter_map(|rest| rest.split('"').next())
             // Nobody can measure it; it is the model's.
             .filter(|name| *name != "pressure outside the burn time")
