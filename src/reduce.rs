@@ -105,7 +105,7 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
         burn: figures.times,
         bursts,
         motor_class: figures.class,
-        stand: stand.map(|s| StandRecord {
+        stand: stand.as_ref().map(|s| StandRecord {
             natural_frequency_hz: s.frequency_hz,
             damping_ratio: Some(s.damping_ratio),
             source: s.source.to_string(),

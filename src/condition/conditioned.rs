@@ -2,6 +2,7 @@
 //! long as the data allow; and the peak of that curve with the bias that noise and smoothing give it taken out.
 
 use crate::condition::adaptive::{self, Smoothed};
+use crate::condition::ignition::Ignition;
 use crate::condition::median::median;
 use crate::condition::response::{self, Response};
 use crate::condition::scatter::Scatter;
@@ -31,6 +32,20 @@ pub struct Conditioned {
     sample_noise_n: Vec<f64>,
     /// Noise of single samples in the quiet record, before any filter, N.
     quiet_noise_n: f64,
+    /// Where the compensation of the stand's response ends, Hz.
+    pub band_end_hz: Option<f64>,
+    /// The ignition by models driven through the stand; the curve follows it there.
+    pub ignition: Option<Ignition>,
+}
+
+/// The stand to be seen through.
+#[derive(Debug, Clone, Copy)]
+pub struct Through<'a> {
+    /// As it is at ignition.
+    pub response: Response,
+    /// Mass on the spring over that at ignition, one a sample; empty where it stays.
+    pub inertia: &'a [f64],
+    pub ignition: Option<&'a Ignition>,
 }
 
 /// The signal must stand this far out of the noise floor (in power) to count.
@@ -131,7 +146,7 @@ pub fn condition(
     quiet_sd_n: f64,
     burst_s: f64,
     wanted: Option<Lowpass>,
-    stand: Option<Response>,
+    stand: Option<Through<'_>>,
 ) -> Conditioned {
     let uneven = time_s.windows(2).any(|w| ((w[1] - w[0]) / interval_s - 1.0).abs() > 0.02);
     let (grid_s, mut value) =
@@ -143,10 +158,19 @@ pub fn condition(
     let typical = median(noise_n.clone());
     let mut autocorrelation = vec![1.0];
     let mut quiet_noise_n = quiet_sd_n;
-    if let Some(response) = stand {
+    let mut band_end_hz = None;
+    if let Some(Through { response, inertia, .. }) = stand {
         let highest = value.iter().copied().fold(f64::MIN_POSITIVE, f64::max);
         let kernel = response::kernel(response, interval_s, typical / highest);
-        value = response::apply(&kernel, &value);
+        band_end_hz = Some(response::band_end_hz(response, interval_s, typical / highest));
+        if inertia.len() == time_s.len() {
+            let inertia = if uneven { even_grid(time_s, inertia, interval_s).1 } else { inertia.to_vec() };
+            let (steady, inertial) = response::kernels(response, interval_s, typical / highest);
+            let (steady, inertial) = (response::apply(&steady, &value), response::apply(&inertial, &value));
+            value = steady.iter().zip(&inertial).zip(&inertia).map(|((a, b), m)| a + m * b).collect();
+        } else {
+            value = response::apply(&kernel, &value);
+        }
         let product = |lag: usize| -> f64 { kernel.iter().zip(&kernel[lag..]).map(|(a, b)| a * b).sum() };
         let power = product(0);
         autocorrelation = (0..kernel.len()).map(|lag| product(lag) / power).collect();
@@ -183,11 +207,15 @@ pub fn condition(
         samples_n,
         sample_noise_n,
         quiet_noise_n,
+        band_end_hz,
+        // A person's low-pass is exactly what is applied.
+        ignition: stand.and_then(|s| s.ignition).filter(|_| wanted.is_none()).cloned(),
     };
     if wanted.is_none() {
         let Smoothed { value, standard_error } = conditioned.smooth(&value, 0..n);
         conditioned.thrust_n = value;
         conditioned.standard_error_n = standard_error;
+        conditioned.follow_ignition();
     } else {
         conditioned.thrust_n = value;
     }
@@ -211,9 +239,40 @@ impl Conditioned {
         adaptive::smooth(value, &self.noise_n[range], &self.autocorrelation, self.longest)
     }
 
+    /// Puts the ignition in the place of the smoothed readings up to where it hands over, and fades from there to its end.
+    fn follow_ignition(&mut self) {
+        let Some(ignition) = &self.ignition else { return };
+        let (Some(&first), Some(&last)) = (ignition.time_s.first(), ignition.time_s.last()) else { return };
+        for (i, t) in self.time_s.iter().enumerate() {
+            if *t < first || *t >= last {
+                continue;
+            }
+            let (value, error) = ignition.at(*t);
+            let share = ((last - t) / (last - ignition.hand_over_s)).clamp(0.0, 1.0);
+            self.thrust_n[i] += share * (value - self.thrust_n[i]);
+            self.standard_error_n[i] += share * (error - self.standard_error_n[i]);
+        }
+    }
+
     /// Peak between the grid indices of `range`. `averaged`: the samples are means over their intervals, which a corner between them
     /// cannot be told from.
     pub fn peak(&self, range: std::ops::Range<usize>, averaged: bool) -> Option<Peak> {
+        let read = self.peak_of_readings(range, averaged)?;
+        let Some(ignition) = &self.ignition else { return Some(read) };
+        let (Some(&first), Some(&last)) = (ignition.time_s.first(), ignition.time_s.last()) else { return Some(read) };
+        let fitted =
+            Peak { time_s: ignition.peak_s, thrust_n: ignition.peak_n, noise_u_n: ignition.peak_u_n, ..read };
+        // One top, told twice: the one that is known better counts. Two tops: the higher, where it plainly is.
+        let one = (first..=last).contains(&read.time_s);
+        let better = if one {
+            fitted.noise_u_n < read.noise_u_n
+        } else {
+            fitted.thrust_n - read.thrust_n > fitted.noise_u_n.hypot(read.noise_u_n)
+        };
+        Some(if better { fitted } else { read })
+    }
+
+    fn peak_of_readings(&self, range: std::ops::Range<usize>, averaged: bool) -> Option<Peak> {
         let piece = self.thrust_n.get(range.clone())?;
         let (at, highest_n) = piece.iter().copied().enumerate().max_by(|a, b| a.1.total_cmp(&b.1))?;
         let at = range.start + at;

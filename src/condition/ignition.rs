@@ -37,9 +37,23 @@ pub struct Ignition {
     pub stand: Known,
 }
 
+impl Ignition {
+    /// Thrust and its standard error at a time within the course, N.
+    pub fn at(&self, time_s: f64) -> (f64, f64) {
+        let i = self.time_s.partition_point(|t| *t <= time_s).clamp(1, self.time_s.len().max(2) - 1);
+        match (self.time_s.get(i - 1..=i), self.thrust_n.get(i - 1..=i), self.standard_error_n.get(i - 1..=i)) {
+            (Some(t), Some(f), Some(u)) => {
+                let part = ((time_s - t[0]) / (t[1] - t[0])).clamp(0.0, 1.0);
+                (f[0] + part * (f[1] - f[0]), u[0] + part * (u[1] - u[0]))
+            }
+            _ => (0.0, 0.0),
+        }
+    }
+}
+
 /// Periods before the half-way point of the rise, and after it, that are fitted; fewer than `FEWEST` tell too little.
 const BEFORE: f64 = 1.5;
-const AFTER: f64 = 8.5;
+const AFTER: [f64; 3] = [8.5, 5.0, 3.0];
 const FEWEST: f64 = 2.5;
 /// Readings a period: fewer do not show the swing; more are averaged.
 const FEWEST_READINGS: f64 = 8.0;
@@ -54,7 +68,9 @@ const BEND_BESIDE_TRANSIENT: f64 = 1.3e-4;
 const COURSE: f64 = 1.25;
 const COURSE_STEP: f64 = 1.0 / 200.0;
 const HAND_OVER: f64 = 0.75;
-/// What is left may exceed the noise so many times (in variance); beyond, no model is believed.
+/// What is left may exceed the noise so many times (in variance); beyond, a shorter stretch is tried, ...
+const MUCH_LEFT: f64 = 1.5;
+/// ... or no model is believed.
 const MOST_LEFT: f64 = 2.0;
 /// Models with less evidence than this share are left out.
 const LEAST_WEIGHT: f64 = 0.003;
@@ -305,8 +321,31 @@ pub fn fit(
     known: Known,
     inertia: impl Fn(f64) -> f64,
 ) -> Option<Ignition> {
+    let mut best: Option<(f64, Ignition)> = None;
+    for after in AFTER {
+        let until_s = limit_s.min(half_s + after / known.frequency_hz);
+        if let Some((left, found)) = fit_until(time_s, thrust_n, noise_n, [half_s, until_s], known, &inertia)
+            && best.as_ref().is_none_or(|(least, _)| left < *least)
+        {
+            best = Some((left, found));
+        }
+        if best.as_ref().is_some_and(|(left, _)| *left < MUCH_LEFT) {
+            break;
+        }
+    }
+    best.map(|(_, found)| found)
+}
+
+/// The same over one stretch; with the share of the noise's variance that is left.
+fn fit_until(
+    time_s: &[f64],
+    thrust_n: &[f64],
+    noise_n: f64,
+    [half_s, until_s]: [f64; 2],
+    known: Known,
+    inertia: &impl Fn(f64) -> f64,
+) -> Option<(f64, Ignition)> {
     let period_s = 1.0 / known.frequency_hz;
-    let until_s = limit_s.min(half_s + AFTER * period_s);
     if noise_n <= 0.0 || until_s - half_s < FEWEST * period_s {
         return None;
     }
@@ -356,7 +395,8 @@ pub fn fit(
         return None;
     }
     // Where even the best leaves more than the noise (a hum, glitches mended), evidence and errors count accordingly less.
-    let excess = best.misfit.max(1.0);
+    let best_misfit = best.misfit;
+    let excess = best_misfit.max(1.0);
     let highest = best.evidence;
     let end = best.parameters[0] + best.model.risen(place(&best.parameters)) + COURSE;
     let hand_over = end - COURSE + HAND_OVER;
@@ -383,7 +423,7 @@ pub fn fit(
     let thrust: Vec<f64> = (0..grid.len()).map(|i| mean(&|c| c.values[i])).collect();
     let standard_error_n = thrust.iter().enumerate().map(|(i, m)| level * error(&|c| (c.values[i], c.variances[i]), *m));
     let frequency_hz = known.frequency_hz * log_frequency.exp();
-    Some(Ignition {
+    let ignition = Ignition {
         standard_error_n: standard_error_n.collect(),
         thrust_n: thrust.iter().map(|v| v * level).collect(),
         time_s: grid.iter().map(|s| half_s + s * period_s).collect(),
@@ -397,7 +437,8 @@ pub fn fit(
             damping_ratio: damping,
             damping_u: (excess * damping_variance).sqrt(),
         },
-    })
+    };
+    Some((best_misfit, ignition))
 }
 
 #[cfg(test)]

@@ -22,12 +22,31 @@ const LONGEST: f64 = 0.08;
 
 /// The kernel that turns readings at `interval_s` into the force on the motor's side, centred.
 pub fn kernel(response: Response, interval_s: f64, noise_share: f64) -> Vec<f64> {
+    let (steady, inertial) = kernels(response, interval_s, noise_share);
+    steady.iter().zip(&inertial).map(|(a, b)| a + b).collect()
+}
+
+/// Where the band of the compensation ends: the frequency at which its smoothing leaves half, Hz. A Gaussian of standard deviation s
+/// leaves exp(−(2 π f s)²/2).
+pub fn band_end_hz(response: Response, interval_s: f64, noise_share: f64) -> f64 {
+    (2.0 * 2f64.ln()).sqrt() / (2.0 * PI * smoothing_s(response, interval_s, noise_share))
+}
+
+/// Standard deviation of the Gaussian, s.
+fn smoothing_s(response: Response, interval_s: f64, noise_share: f64) -> f64 {
     let omega = 2.0 * PI * response.frequency_hz;
-    let (first, second) = (2.0 * response.damping_ratio / omega, 1.0 / (omega * omega));
+    let second = 1.0 / (omega * omega);
     // Variance that G″ leaves of white noise: 3/(8 √π s⁵) times the interval.
     let gain = (NOISE_SHARE / noise_share.max(1e-9)).max(1.0);
     let s = (second * second * 3.0 / (8.0 * PI.sqrt()) * interval_s / (gain * gain)).powf(0.2);
-    let s = s.min(LONGEST / response.frequency_hz).max(SHORTEST * interval_s);
+    s.min(LONGEST / response.frequency_hz).max(SHORTEST * interval_s)
+}
+
+/// The kernel in two parts: force of spring and dashpot, and that of the mass, which falls with it.
+pub fn kernels(response: Response, interval_s: f64, noise_share: f64) -> (Vec<f64>, Vec<f64>) {
+    let omega = 2.0 * PI * response.frequency_hz;
+    let (first, second) = (2.0 * response.damping_ratio / omega, 1.0 / (omega * omega));
+    let s = smoothing_s(response, interval_s, noise_share);
     let half = (5.0 * s / interval_s).ceil() as i64;
     let times: Vec<f64> = (-half..=half).map(|k| k as f64 * interval_s).collect();
     let gauss: Vec<f64> = times.iter().map(|t| (-0.5 * (t / s).powi(2)).exp()).collect();
@@ -38,7 +57,8 @@ pub fn kernel(response: Response, interval_s: f64, noise_share: f64) -> Vec<f64>
     let spread = times.iter().zip(&gauss).map(|(t, g)| t * t * g).sum::<f64>() / norm;
     let d2: Vec<f64> = times.iter().zip(&gauss).map(|(t, g)| (t * t - spread) * g).collect();
     let d2_norm: f64 = d2.iter().zip(&times).map(|(d, t)| d * t * t / 2.0).sum();
-    (0..times.len()).map(|k| gauss[k] / norm + first * d1[k] / d1_norm + second * d2[k] / d2_norm).collect()
+    let steady = (0..times.len()).map(|k| gauss[k] / norm + first * d1[k] / d1_norm).collect();
+    (steady, d2.iter().map(|d| second * d / d2_norm).collect())
 }
 
 /// Convolves evenly spaced data with a centred kernel; beyond the ends the end values go on.
