@@ -92,6 +92,11 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
     let mut findings = inputs.log.findings.clone();
     findings.extend(record.findings.iter().cloned());
     findings.append(&mut figures.findings);
+    if let Some(count) = stand.as_ref().map(|s| s.impossible).filter(|n| *n > 0) {
+        findings.push(format!(
+            "{count} readings that no mass on a spring can give are bridged in the curve; the impulse still counts them"
+        ));
+    }
     let firing = Firing {
         schema: SCHEMA.to_string(),
         run: RunRecord {

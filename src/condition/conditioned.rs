@@ -32,6 +32,7 @@ pub struct Conditioned {
     sample_noise_n: Vec<f64>,
     /// Noise of single samples in the quiet record, before any filter, N.
     quiet_noise_n: f64,
+    noise_gain: f64,
     /// Where the compensation of the stand's response ends, Hz.
     pub band_end_hz: Option<f64>,
     /// The ignition by models driven through the stand; the curve follows it there.
@@ -63,6 +64,8 @@ const CHOICE_OF_STRETCH: f64 = std::f64::consts::SQRT_2;
 /// errors of their difference.
 const LARGEST_CORNER_ERROR: f64 = 0.03;
 const CORNER_EVIDENCE: f64 = 2.5;
+/// A fitted ignition is nearly as sure as the readings up to this factor of their uncertainty.
+const NEARLY_AS_SURE: f64 = 2.0;
 /// Parts of the burst whose tops are looked at, where they reach this share of the highest.
 const PARTS: usize = 16;
 const NEARLY_HIGHEST: f64 = 0.97;
@@ -158,7 +161,7 @@ pub fn condition(
     let typical = median(noise_n.clone());
     let mut autocorrelation = vec![1.0];
     let mut quiet_noise_n = quiet_sd_n;
-    let mut band_end_hz = None;
+    let (mut band_end_hz, mut noise_gain) = (None, 1.0);
     if let Some(Through { response, inertia, .. }) = stand {
         let highest = value.iter().copied().fold(f64::MIN_POSITIVE, f64::max);
         let kernel = response::kernel(response, interval_s, typical / highest);
@@ -175,7 +178,8 @@ pub fn condition(
         let power = product(0);
         autocorrelation = (0..kernel.len()).map(|lag| product(lag) / power).collect();
         // Roughness that the second differences showed is the stand's swing in part; the quiet noise is what is amplified.
-        quiet_noise_n = quiet_sd_n * power.sqrt();
+        noise_gain = power.sqrt();
+        quiet_noise_n = quiet_sd_n * noise_gain;
         noise_n = vec![quiet_noise_n; n];
     }
     let cutoff_hz = match wanted {
@@ -207,6 +211,7 @@ pub fn condition(
         samples_n,
         sample_noise_n,
         quiet_noise_n,
+        noise_gain,
         band_end_hz,
         // A person's low-pass is exactly what is applied.
         ignition: stand.and_then(|s| s.ignition).filter(|_| wanted.is_none()).cloned(),
@@ -235,6 +240,11 @@ pub struct Peak {
 }
 
 impl Conditioned {
+    /// By how much the compensation of the stand's response takes up the noise of a reading; 1 without it.
+    pub fn noise_gain(&self) -> f64 {
+        self.noise_gain
+    }
+
     fn smooth(&self, value: &[f64], range: std::ops::Range<usize>) -> Smoothed {
         adaptive::smooth(value, &self.noise_n[range], &self.autocorrelation, self.longest)
     }
@@ -265,11 +275,17 @@ impl Conditioned {
         // One top, told twice: the one that is known better counts. Two tops: the higher, where it plainly is.
         let one = (first..=last).contains(&read.time_s);
         let better = if one {
+            // Readings with the stand taken out round a sharp top off, so that a higher one counts where it is nearly as sure.
             fitted.noise_u_n < read.noise_u_n
+                || fitted.noise_u_n < NEARLY_AS_SURE * read.noise_u_n
+                    && fitted.thrust_n - read.thrust_n > read.noise_u_n
         } else {
             fitted.thrust_n - read.thrust_n > fitted.noise_u_n.hypot(read.noise_u_n)
         };
-        Some(if better { fitted } else { read })
+        // Where the two ways do not agree, neither is as sure as it seems.
+        let open = if one { 0.5 * (fitted.thrust_n - read.thrust_n).abs() } else { 0.0 };
+        let chosen = if better { fitted } else { read };
+        Some(Peak { noise_u_n: chosen.noise_u_n.hypot(open.min(ignition.peak_u_n.max(read.noise_u_n))), ..chosen })
     }
 
     fn peak_of_readings(&self, range: std::ops::Range<usize>, averaged: bool) -> Option<Peak> {

@@ -9,7 +9,7 @@
 
 use crate::condition::forward;
 use crate::condition::rise::{Model, Place, RISES, Rise};
-use nalgebra::{DMatrix, DVector, SMatrix, SVector};
+use nalgebra::{Cholesky, DMatrix, DVector, Dyn, SMatrix, SVector};
 
 /// The stand as it is known before, each with its standard uncertainty.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -72,6 +72,8 @@ const HAND_OVER: f64 = 0.75;
 const MUCH_LEFT: f64 = 1.5;
 /// ... or no model is believed.
 const MOST_LEFT: f64 = 2.0;
+/// Searches of each model, from as many beginnings.
+const BEGINNINGS: usize = 2;
 /// Models with less evidence than this share are left out.
 const LEAST_WEIGHT: f64 = 0.003;
 
@@ -96,7 +98,7 @@ struct Readings {
 
 struct Solved {
     coefficients: DVector<f64>,
-    inverse: DMatrix<f64>,
+    normal: Cholesky<f64, Dyn>,
     log_det: f64,
     left: Vec<f64>,
     misfit: f64,
@@ -171,7 +173,7 @@ impl Readings {
         left.push((p[2] - mean) / sd);
         left.push(p[3] * known.frequency_hz / known.frequency_u_hz);
         left.push((p[4] - known.damping_ratio) / known.damping_u);
-        Some(Solved { coefficients, inverse: cholesky.inverse(), log_det, left, misfit })
+        Some(Solved { coefficients, normal: cholesky, log_det, left, misfit })
     }
 
     fn cost(&self, model: &Model, p: &Parameters) -> f64 {
@@ -188,14 +190,39 @@ impl Readings {
         p
     }
 
-    fn fit(&self, model: Model) -> Option<Fitted> {
-        const STEP: [f64; PARAMETERS] = [1e-3, 1e-2, 1e-2, 1e-4, 1e-4];
+    /// Where a search may begin: the best few of a coarse grid.
+    fn beginnings(&self, model: &Model) -> Vec<Parameters> {
         let (shape, _) = model.expected_shape();
-        let times: [f64; 3] = if model.rise == Rise::Ramp { [0.15, 0.3, 0.55] } else { [0.06, 0.12, 0.22] };
-        let starts = times.iter().flat_map(|time| [-0.45, -0.35, -0.27].map(|start| (start, time.ln())));
-        let mut p = starts
+        let times: [f64; 4] = if model.rise == Rise::Ramp { [0.1, 0.2, 0.4, 0.65] } else { [0.05, 0.1, 0.2, 0.4] };
+        let starts = times.iter().flat_map(|time| [-0.55, -0.45, -0.35, -0.27].map(|start| (start, time.ln())));
+        let mut all: Vec<(f64, Parameters)> = starts
             .map(|(start, time)| Parameters::from([start, time, shape, 0.0, self.known.damping_ratio]))
-            .min_by(|a, b| self.cost(&model, a).total_cmp(&self.cost(&model, b)))?;
+            .map(|p| (self.cost(model, &p), p))
+            .collect();
+        all.sort_unstable_by(|a, b| a.0.total_cmp(&b.0));
+        all.into_iter().take(BEGINNINGS).map(|(_, p)| p).collect()
+    }
+
+    /// A model with and without a transient; each also from where the other ended.
+    fn fit_rise(&self, rise: Rise, length: f64) -> Vec<Fitted> {
+        let plain = Model::new(rise, false, BEND, length);
+        let beside = Model::new(rise, true, BEND_BESIDE_TRANSIENT, length);
+        let begin = self.beginnings(&plain);
+        let best = |model: &Model, from: &[Parameters]| {
+            let fits = from.iter().filter_map(|p| self.fit(model.clone(), *p));
+            fits.max_by(|a, b| a.evidence.total_cmp(&b.evidence))
+        };
+        let first = best(&plain, &begin);
+        let mut from = begin;
+        from.extend(first.as_ref().map(|f| f.parameters));
+        let second = best(&beside, &from);
+        let again = second.as_ref().and_then(|f| self.fit(plain, f.parameters));
+        let first = first.into_iter().chain(again).max_by(|a, b| a.evidence.total_cmp(&b.evidence));
+        first.into_iter().chain(second).filter(|f| f.evidence.is_finite()).collect()
+    }
+
+    fn fit(&self, model: Model, mut p: Parameters) -> Option<Fitted> {
+        const STEP: [f64; PARAMETERS] = [1e-3, 1e-2, 1e-2, 1e-4, 1e-4];
         let mut solved = self.solve(&model, &p)?;
         let sum = |left: &[f64]| left.iter().map(|r| r * r).sum::<f64>();
         let mut cost = sum(&solved.left);
@@ -283,11 +310,12 @@ fn course(readings: &Readings, fitted: &Fitted, times: &[f64]) -> Option<Course>
         peak_slope[k] = (top(&p, &other).1 - peak) / step;
         moved.push((p, other, step));
     }
+    let inverse = solved.normal.inverse();
     let variance_of = |p: &Parameters, t: f64| -> f64 {
         let mut row = vec![0.0; model.columns() + 1];
         model.row(place(p), t, &mut row[..model.columns()]);
         let row = DVector::from_vec(row);
-        (row.transpose() * &solved.inverse * &row)[0]
+        (row.transpose() * &inverse * &row)[0]
     };
     let mut values = Vec::with_capacity(times.len());
     let mut variances = Vec::with_capacity(times.len());
@@ -384,12 +412,7 @@ fn fit_until(
     }
     readings.inertia = readings.nodes.iter().map(|s| inertia(half_s + s * period_s).max(0.05)).collect();
     let length = (until_s - half_s) / period_s + 1.0;
-    let mut fits: Vec<Fitted> = RISES
-        .iter()
-        .flat_map(|rise| [(false, BEND), (true, BEND_BESIDE_TRANSIENT)].map(|(transient, bend)| (*rise, transient, bend)))
-        .filter_map(|(rise, transient, bend)| readings.fit(Model::new(rise, transient, bend, length)))
-        .filter(|f| f.evidence.is_finite())
-        .collect();
+    let mut fits: Vec<Fitted> = RISES.iter().flat_map(|rise| readings.fit_rise(*rise, length)).collect();
     let best = fits.iter().max_by(|a, b| a.evidence.total_cmp(&b.evidence))?;
     if best.misfit > MOST_LEFT {
         return None;

@@ -77,9 +77,63 @@ pub fn apply(kernel: &[f64], data: &[f64]) -> Vec<f64> {
         .collect()
 }
 
+/// Readings a period from which on a reading that no stand can give is told from a sharp step of thrust, ...
+const LEAST_READINGS: f64 = 20.0;
+/// ... by so many standard deviations of noise.
+const TIMES_NOISE: f64 = 8.0;
+
+/// Thrust that jumps leaves a kink in the course of the mass; the cubic misses it by up to this share of (ω dt)² times the jump
+/// (0.104, the jump midway between two readings), taken with a margin.
+const KINK: f64 = 0.15;
+
+/// Lone readings that no mass on a spring can give, whatever pushes it, with what stands between their neighbours: a mass does not jump.
+/// `noise`: standard deviation of a reading.
+pub fn impossible(time_s: &[f64], data: &[f64], frequency_hz: f64, noise: f64) -> Vec<(usize, f64)> {
+    // The cubic through two neighbours on either side, at their own times.
+    let between = |t: &[f64], w: &[f64]| -> f64 {
+        let others = [0, 1, 3, 4];
+        let weight = |k: usize| others.iter().filter(|j| **j != k).map(|j| (t[2] - t[*j]) / (t[k] - t[*j])).product::<f64>();
+        others.iter().map(|k| w[*k] * weight(*k)).sum()
+    };
+    let off: Vec<(f64, f64)> = time_s
+        .windows(5)
+        .zip(data.windows(5))
+        .map(|(t, w)| (w[2] - between(t, w), 0.5 * (t[3] - t[1])))
+        .collect();
+    let highest = data.iter().fold(0.0_f64, |h, v| h.max(v.abs()));
+    // Even neighbours' noise adds 34/36 of a reading's variance.
+    let by_noise = TIMES_NOISE * noise * (70f64 / 36.0).sqrt();
+    let limit = |interval_s: f64| by_noise + KINK * highest * (2.0 * PI * frequency_hz * interval_s).powi(2);
+    let fine = |interval_s: f64| frequency_hz * interval_s * LEAST_READINGS < 1.0;
+    let largest_near =
+        |k: usize| (k.saturating_sub(2)..(k + 3).min(off.len())).all(|i| off[i].0.abs() <= off[k].0.abs());
+    (0..off.len())
+        .filter(|k| noise > 0.0 && fine(off[*k].1) && off[*k].0.abs() > limit(off[*k].1) && largest_near(*k))
+        .map(|k| (k + 2, data[k + 2] - off[k].0))
+        .collect()
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn a_reading_that_a_mass_cannot_give() {
+        let mut data: Vec<f64> =
+            (0..400).map(|i| if i < 100 { 0.0 } else { 100.0 - 100.0 * (0.2136 * f64::from(i - 100)).cos() }).collect();
+        // Stamps off by a twentieth of an interval, and readings with them.
+        let time_s: Vec<f64> = (0..400).map(|i| 0.001 * (f64::from(i) + 0.05 * f64::from(i * 7 % 5 - 2) / 2.0)).collect();
+        for (t, x) in time_s.iter().zip(&mut data).skip(100) {
+            *x = 100.0 - 100.0 * (213.6 * (t - 0.1).max(0.0)).cos();
+        }
+        // A thrust that jumps from nil to full within one interval is none.
+        assert!(impossible(&time_s, &data, 34.0, 0.3).is_empty());
+        let was = data[250];
+        data[250] += 16.0;
+        let found = impossible(&time_s, &data, 34.0, 0.3);
+        assert!(found.len() == 1 && found[0].0 == 250 && (found[0].1 - was).abs() < 0.2, "{found:?}");
+        assert!(impossible(&time_s, &data, 340.0, 0.3).is_empty() && impossible(&time_s[..3], &data[..3], 34.0, 0.3).is_empty());
+    }
 
     /// tests/reference/sdof_trapezoid_fn38_zeta003_1kHz.csv: computed in closed form, checked with scipy lsim (3e-12).
     #[test]

@@ -20,8 +20,8 @@ pub const RISES: [Rise; 3] = [Rise::Ramp, Rise::Approach, Rise::ApproachThenLeve
 
 /// Knots of the level after the rise, periods: a spline of straight pieces, closer where the reading tells more.
 const KNOTS: [f64; 14] = [0.0, 0.1, 0.2, 0.34, 0.5, 0.75, 1.1, 1.6, 2.2, 3.2, 4.6, 6.5, 9.2, 13.0];
-/// Time constants of transients, periods: between them any decay from half to three of them is made up.
-const DECAYS: [f64; 2] = [0.85, 2.4];
+/// Time constants of transients, periods: of these three any decay between is made up.
+const DECAYS: [f64; 3] = [0.85, 2.2, 5.5];
 /// Standard deviation expected of a transient's amplitude, levels.
 const TRANSIENT: f64 = 0.5;
 
@@ -149,11 +149,8 @@ mod tests {
     #[test]
     fn a_straight_level_is_no_surprise() {
         let model = Model::new(Rise::Ramp, true, 1e-3, 8.0);
-        let level: Vec<f64> = KNOTS.iter().map(|k| 1.0 - 0.05 * k).chain([0.0, 0.0]).collect();
-        assert!(model.columns() <= level.len());
-        let mut level = level[..model.columns()].to_vec();
-        let n = level.len();
-        level[n - 2..].fill(0.0);
+        let knots = model.columns() - DECAYS.len();
+        let level: Vec<f64> = KNOTS[..knots].iter().map(|k| 1.0 - 0.05 * k).chain(DECAYS.map(|_| 0.0)).collect();
         for row in model.expectations() {
             assert!(row.iter().map(|(i, w)| w * level[*i]).sum::<f64>().abs() < 1e-9);
         }

@@ -17,6 +17,8 @@ pub struct Curve {
     pub peak: Peak,
     pub quiet_sd_n: f64,
     pub tail: Option<Tail>,
+    /// Relative standard uncertainty of the stand's frequency, and that of its damping ratio, where its response is taken out.
+    pub stand_u: Option<[f64; 2]>,
     /// Whether the curve was reconstructed inside averaged cells.
     pub reconstructed: bool,
     /// Reconstructed rise and fall of an averaging converter.
@@ -35,15 +37,21 @@ impl Curve {
         }
         if let Some(stand) = stand.filter(|s| s.taken_out) {
             words.push(format!(
-                "response of the stand taken out ({:.2} Hz, damping ratio {:.3}, {})",
-                stand.frequency_hz, stand.damping_ratio, stand.source
+                "response of the stand taken out ({:.2} Hz{}, damping ratio {:.3}, {})",
+                stand.frequency_hz,
+                stand.frequency_after_hz.map_or(String::new(), |hz| format!(" at ignition, {hz:.2} Hz after burn-out")),
+                stand.damping_ratio,
+                stand.source
             ));
         }
         match self.conditioned.cutoff_hz {
             Some(hz) => words.push(format!("zero-phase Butterworth low-pass, second order run both ways, {hz:.3} Hz")),
             None if self.conditioned.band_end_hz.is_some() => {
                 let hz = self.conditioned.band_end_hz.unwrap_or(0.0);
-                words.push(format!("the band of the compensation ends at {hz:.0} Hz (half amplitude)"));
+                let gain = self.conditioned.noise_gain();
+                words.push(format!(
+                    "the band of the compensation ends at {hz:.0} Hz (half amplitude), where it takes the noise of a reading up {gain:.1} times before smoothing"
+                ));
             }
             None => words.push("no low-pass: signal reaches up to the end of the band".to_string()),
         }
@@ -67,9 +75,10 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
     let time_s = &record.time_s[zero.window.clone()];
     let quiet_sd_n = zero::sample_noise(zero);
     let burst_s = [record.time_s[record.burn.start], record.time_s[zero.burst.end - 1]];
+    let readings = stand.map(|s| &s.readings_n).filter(|r| r.len() == time_s.len()).unwrap_or(&zero.thrust_n);
     let mut conditioned = conditioned::condition(
         time_s,
-        &zero.thrust_n,
+        readings,
         record.interval_s(),
         quiet_sd_n,
         record.time_s[record.burn.end - 1] - record.time_s[record.burn.start],
@@ -131,6 +140,7 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
         quiet_sd_n,
         tail: tail.flatten(),
         reconstructed,
+        stand_u: stand.filter(|s| s.taken_out).map(|s| [s.frequency_u_hz / s.frequency_hz, s.damping_u]),
         rise,
         fall,
         burst_s,

@@ -25,6 +25,11 @@ pub struct Stand {
     pub inertia: Vec<f64>,
     /// The ignition by models driven through the stand.
     pub ignition: Option<Ignition>,
+    /// Thrust as read, without the readings that no mass on a spring can give, and how many these were; empty where nothing is taken out.
+    pub readings_n: Vec<f64>,
+    pub impossible: usize,
+    /// By how many standard uncertainties the record contradicts what run.toml tells of the frequency.
+    pub contradicts: Option<f64>,
 }
 
 impl Stand {
@@ -59,6 +64,10 @@ const FITTED_SHARE: f64 = 0.6;
 /// A ring tells the stand no better than to this share of its damping and frequency: what the motor does meanwhile is in it too.
 const DAMPING_FLOOR: f64 = 0.1;
 const FREQUENCY_FLOOR: f64 = 0.002;
+/// From so many standard uncertainties on the record contradicts what it was told.
+const CONTRADICTION: f64 = 3.0;
+/// A ring after burn-out counts from so many times the noise of a sample on.
+const LEAST_AFTER: f64 = 6.0;
 /// The frequency has risen where the ring after burn-out says so by so many standard uncertainties, and by no more than this factor.
 const RISEN_EVIDENCE: f64 = 4.0;
 const MOST_RISEN: f64 = 1.6;
@@ -66,17 +75,28 @@ const MOST_RISEN: f64 = 1.6;
 /// What is known of the stand from run.toml or the record.
 pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     let mut stand = identify(record, zero)?;
-    if !stand.taken_out || !figures::clipped_in_burn(record).is_empty() {
+    if !stand.taken_out {
         return Some(stand);
     }
     let t = &record.time_s[zero.window.clone()];
-    let f = &zero.thrust_n;
+    let mut readings = zero.thrust_n.clone();
+    let impossible =
+        response::impossible(t, &readings, stand.frequency_hz, super::zero::sample_noise(zero));
+    for (i, value) in &impossible {
+        readings[*i] = *value;
+    }
+    stand.impossible = impossible.len();
+    if !figures::clipped_in_burn(record).is_empty() {
+        stand.readings_n = readings;
+        return Some(stand);
+    }
+    let f = &readings;
     let inside = zero.burst.start - zero.window.start..zero.burst.end - zero.window.start;
     let highest = f[inside.clone()].iter().copied().fold(0.0, f64::max);
     let half = f[inside.clone()].iter().position(|v| *v > 0.5 * highest)? + inside.start;
     let noise = super::zero::sample_noise(zero);
     let end_s = t[inside.end - 1];
-    lighten(&mut stand, t, f, inside.clone(), noise, LEAST_SHARE * highest);
+    lighten(&mut stand, t, f, inside.clone(), noise, (LEAST_SHARE * highest).max(LEAST_AFTER * noise));
     let mut known = stand.known();
     known.frequency_u_hz = known.frequency_u_hz.max(FREQUENCY_FLOOR * known.frequency_hz);
     known.damping_u = known.damping_u.max(DAMPING_FLOOR * known.damping_ratio);
@@ -90,9 +110,12 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     }
     if let Some(ignition) = &stand.ignition {
         let seen = ignition.stand;
+        let off = (seen.frequency_hz - stand.frequency_hz).abs() / stand.frequency_u_hz.hypot(seen.frequency_u_hz);
+        stand.contradicts = (stand.source == "run.toml" && off > CONTRADICTION).then_some(off);
         (stand.frequency_hz, stand.frequency_u_hz) = (seen.frequency_hz, seen.frequency_u_hz);
         (stand.damping_ratio, stand.damping_u) = (seen.damping_ratio, seen.damping_u);
     }
+    stand.readings_n = readings;
     Some(stand)
 }
 
@@ -102,7 +125,7 @@ fn lighten(stand: &mut Stand, t: &[f64], f: &[f64], inside: std::ops::Range<usiz
     let highest = f[inside.clone()].iter().copied().fold(0.0, f64::max);
     let low = f[..inside.end].iter().rposition(|v| *v > 0.1 * highest).unwrap_or(inside.end - 1);
     let last_s = t[t.len() - 1];
-    let rings = [t[low], end_s].map(|from| ringing::after(t, f, noise, from, last_s, least.min(8.0 * noise)));
+    let rings = [t[low], end_s].map(|from| ringing::after(t, f, noise, from, last_s, least));
     let Some(ring) = rings
         .into_iter()
         .flatten()
@@ -143,6 +166,9 @@ fn identify(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
             frequency_after_hz: None,
             inertia: Vec::new(),
             ignition: None,
+            readings_n: Vec::new(),
+            impossible: 0,
+            contradicts: None,
         });
     }
     let t = &record.time_s[zero.window.clone()];
@@ -219,5 +245,8 @@ fn of(ring: Ring, source: &'static str, share_of_peak: Option<f64>, taken_out: b
         frequency_after_hz: None,
         inertia: Vec::new(),
         ignition: None,
+        readings_n: Vec::new(),
+        impossible: 0,
+        contradicts: None,
     }
 }
