@@ -270,8 +270,7 @@ impl Conditioned {
         let read = self.peak_of_readings(range, averaged)?;
         let Some(ignition) = &self.ignition else { return Some(read) };
         let (Some(&first), Some(&last)) = (ignition.time_s.first(), ignition.time_s.last()) else { return Some(read) };
-        let fitted =
-            Peak { time_s: ignition.peak_s, thrust_n: ignition.peak_n, noise_u_n: ignition.peak_u_n, ..read };
+        let fitted = Peak { time_s: ignition.peak_s, thrust_n: ignition.peak_n, noise_u_n: ignition.peak_u_n, ..read };
         // One top, told twice: the one that is known better counts. Two tops: the higher, where it plainly is.
         let one = (first..=last).contains(&read.time_s);
         let better = if one {

@@ -321,8 +321,7 @@ fn course(readings: &Readings, fitted: &Fitted, times: &[f64]) -> Option<Course>
     let mut variances = Vec::with_capacity(times.len());
     for t in times {
         let here = value(&fitted.parameters, &solved, *t);
-        let slope =
-            Parameters::from_fn(|k, _| (value(&moved[k].0, &moved[k].1, *t) - here) / moved[k].2);
+        let slope = Parameters::from_fn(|k, _| (value(&moved[k].0, &moved[k].1, *t) - here) / moved[k].2);
         values.push(here);
         variances.push((slope.transpose() * fitted.covariance * slope)[0] + variance_of(&fitted.parameters, *t));
     }
@@ -438,13 +437,17 @@ fn fit_until(
     }
     let mean = |of: &dyn Fn(&Course) -> f64| courses.iter().map(|(w, c)| w * of(c)).sum::<f64>() / total;
     let error = |of: &dyn Fn(&Course) -> (f64, f64), mean: f64| {
-        let variance =
-            courses.iter().map(|(w, c)| (of(c), w)).map(|((v, var), w)| w * (excess * var + (v - mean).powi(2))).sum::<f64>();
+        let variance = courses
+            .iter()
+            .map(|(w, c)| (of(c), w))
+            .map(|((v, var), w)| w * (excess * var + (v - mean).powi(2)))
+            .sum::<f64>();
         (variance / total).sqrt()
     };
     let peak = mean(&|c| c.peak);
     let thrust: Vec<f64> = (0..grid.len()).map(|i| mean(&|c| c.values[i])).collect();
-    let standard_error_n = thrust.iter().enumerate().map(|(i, m)| level * error(&|c| (c.values[i], c.variances[i]), *m));
+    let standard_error_n =
+        thrust.iter().enumerate().map(|(i, m)| level * error(&|c| (c.values[i], c.variances[i]), *m));
     let frequency_hz = known.frequency_hz * log_frequency.exp();
     let ignition = Ignition {
         standard_error_n: standard_error_n.collect(),
@@ -487,8 +490,7 @@ mod tests {
         let (t, y) = readings(thrust, seed);
         let top = y.iter().copied().fold(0.0, f64::max);
         let half = t[y.iter().position(|v| *v > 0.5 * top).expect("a rise")];
-        let known =
-            Known { frequency_hz: 34.2, frequency_u_hz: 0.34, damping_ratio: 0.03, damping_u: 0.01 };
+        let known = Known { frequency_hz: 34.2, frequency_u_hz: 0.34, damping_ratio: 0.03, damping_u: 0.01 };
         fit(&t, &y, 0.2, [half, 0.45], known, |_| 1.0).expect("a fit")
     }
 
@@ -500,7 +502,12 @@ mod tests {
         let normal = |x: f64| 1.0 / (1.0 + (-1.7 * x).exp());
         let cases: Vec<Case> = vec![
             ("ramp and spike", Box::new(move |t| spike(t - 0.012) * (t / 0.012).clamp(0.0, 1.0)), 100.0, 0.005),
-            ("falling from an approach", Box::new(|t: f64| (100.0 - 60.0 * t) * -(-t.max(0.0) / 0.004).exp_m1()), 98.06, 0.003),
+            (
+                "falling from an approach",
+                Box::new(|t: f64| (100.0 - 60.0 * t) * -(-t.max(0.0) / 0.004).exp_m1()),
+                98.06,
+                0.003,
+            ),
             (
                 "two approaches in turn, then falling",
                 Box::new(|t: f64| {
@@ -510,7 +517,12 @@ mod tests {
                 97.75,
                 0.005,
             ),
-            ("an S without ends, then falling", Box::new(move |t| (100.0 - 60.0 * t) * normal((t - 0.012) / 0.002)), 98.6, 0.005),
+            (
+                "an S without ends, then falling",
+                Box::new(move |t| (100.0 - 60.0 * t) * normal((t - 0.012) / 0.002)),
+                98.6,
+                0.005,
+            ),
         ];
         for (name, thrust, about, limit) in cases {
             let truth = (0..4000).map(|i| thrust(i as f64 * 5e-5)).fold(0.0, f64::max);
@@ -519,7 +531,11 @@ mod tests {
                 let found = fitted(&thrust, seed);
                 let error = found.peak_n / truth - 1.0;
                 assert!(error.abs() < limit, "{name} {seed}: {error} u {}", found.peak_u_n / truth);
-                assert!((found.peak_n - truth).abs() < 3.5 * found.peak_u_n, "{name} {seed}: {error} u {}", found.peak_u_n);
+                assert!(
+                    (found.peak_n - truth).abs() < 3.5 * found.peak_u_n,
+                    "{name} {seed}: {error} u {}",
+                    found.peak_u_n
+                );
                 assert!((found.stand.frequency_hz / FREQUENCY - 1.0).abs() < 0.003, "{name}: {:?}", found.stand);
                 assert!((found.stand.damping_ratio / DAMPING - 1.0).abs() < 0.15, "{name}: {:?}", found.stand);
             }
@@ -529,7 +545,18 @@ mod tests {
     #[test]
     fn what_no_model_explains_is_refused() {
         // A second rise in the middle.
-        let (t, y) = readings(|t| if t < 0.0 { 0.0 } else if t < 0.08 { 50.0 } else { 100.0 }, 1);
+        let (t, y) = readings(
+            |t| {
+                if t < 0.0 {
+                    0.0
+                } else if t < 0.08 {
+                    50.0
+                } else {
+                    100.0
+                }
+            },
+            1,
+        );
         let known = Known { frequency_hz: 34.0, frequency_u_hz: 0.3, damping_ratio: 0.02, damping_u: 0.005 };
         assert_eq!(fit(&t, &y, 0.2, [0.106, 0.45], known, |_| 1.0), None);
         assert_eq!(fit(&[], &[], 0.2, [0.1, 0.4], known, |_| 1.0), None);

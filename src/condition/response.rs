@@ -92,14 +92,12 @@ pub fn impossible(time_s: &[f64], data: &[f64], frequency_hz: f64, noise: f64) -
     // The cubic through two neighbours on either side, at their own times.
     let between = |t: &[f64], w: &[f64]| -> f64 {
         let others = [0, 1, 3, 4];
-        let weight = |k: usize| others.iter().filter(|j| **j != k).map(|j| (t[2] - t[*j]) / (t[k] - t[*j])).product::<f64>();
+        let weight =
+            |k: usize| others.iter().filter(|j| **j != k).map(|j| (t[2] - t[*j]) / (t[k] - t[*j])).product::<f64>();
         others.iter().map(|k| w[*k] * weight(*k)).sum()
     };
-    let off: Vec<(f64, f64)> = time_s
-        .windows(5)
-        .zip(data.windows(5))
-        .map(|(t, w)| (w[2] - between(t, w), 0.5 * (t[3] - t[1])))
-        .collect();
+    let off: Vec<(f64, f64)> =
+        time_s.windows(5).zip(data.windows(5)).map(|(t, w)| (w[2] - between(t, w), 0.5 * (t[3] - t[1]))).collect();
     let highest = data.iter().fold(0.0_f64, |h, v| h.max(v.abs()));
     // Even neighbours' noise adds 34/36 of a reading's variance.
     let by_noise = TIMES_NOISE * noise * (70f64 / 36.0).sqrt();
@@ -122,7 +120,8 @@ mod tests {
         let mut data: Vec<f64> =
             (0..400).map(|i| if i < 100 { 0.0 } else { 100.0 - 100.0 * (0.2136 * f64::from(i - 100)).cos() }).collect();
         // Stamps off by a twentieth of an interval, and readings with them.
-        let time_s: Vec<f64> = (0..400).map(|i| 0.001 * (f64::from(i) + 0.05 * f64::from(i * 7 % 5 - 2) / 2.0)).collect();
+        let time_s: Vec<f64> =
+            (0..400).map(|i| 0.001 * (f64::from(i) + 0.05 * f64::from(i * 7 % 5 - 2) / 2.0)).collect();
         for (t, x) in time_s.iter().zip(&mut data).skip(100) {
             *x = 100.0 - 100.0 * (213.6 * (t - 0.1).max(0.0)).cos();
         }
@@ -132,7 +131,10 @@ mod tests {
         data[250] += 16.0;
         let found = impossible(&time_s, &data, 34.0, 0.3);
         assert!(found.len() == 1 && found[0].0 == 250 && (found[0].1 - was).abs() < 0.2, "{found:?}");
-        assert!(impossible(&time_s, &data, 340.0, 0.3).is_empty() && impossible(&time_s[..3], &data[..3], 34.0, 0.3).is_empty());
+        assert!(
+            impossible(&time_s, &data, 340.0, 0.3).is_empty()
+                && impossible(&time_s[..3], &data[..3], 34.0, 0.3).is_empty()
+        );
     }
 
     /// tests/reference/sdof_trapezoid_fn38_zeta003_1kHz.csv: computed in closed form, checked with scipy lsim (3e-12).

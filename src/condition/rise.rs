@@ -81,7 +81,10 @@ impl Model {
         let (risen, from) = match self.rise {
             Rise::Ramp => {
                 let x = x.min(1.0);
-                ((1.0 - place.shape) * x + place.shape * 0.5 * (1.0 - (std::f64::consts::PI * x).cos()), self.risen(place))
+                (
+                    (1.0 - place.shape) * x + place.shape * 0.5 * (1.0 - (std::f64::consts::PI * x).cos()),
+                    self.risen(place),
+                )
             }
             Rise::Approach => (-(-x.powf(place.shape.exp())).exp_m1(), 0.0),
             Rise::ApproachThenLevel => (-(-x.powf(place.shape.exp())).exp_m1(), self.risen(place)),

@@ -120,7 +120,8 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
     } else if let Some(ignition) = &conditioned.ignition {
         // The rise is told between the samples too.
         let first = ignition.time_s.first().copied().unwrap_or(f64::INFINITY);
-        let (from, to) = (curve_s.partition_point(|t| *t < first), curve_s.partition_point(|t| *t <= ignition.hand_over_s));
+        let (from, to) =
+            (curve_s.partition_point(|t| *t < first), curve_s.partition_point(|t| *t <= ignition.hand_over_s));
         let inner = ignition.time_s.partition_point(|t| *t <= ignition.hand_over_s);
         if from < to {
             curve_s.splice(from..to, ignition.time_s[..inner].iter().copied());

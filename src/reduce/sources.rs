@@ -326,7 +326,8 @@ impl Work<'_> {
         let swing = |time_s: f64| {
             let from = self.bt.partition_point(|t| *t < time_s - SWING_S);
             let to = self.bt.partition_point(|t| *t <= time_s + SWING_S);
-            let off = (from..to).map(|i| (self.bf[i] - curve::at(&self.curve.time_s, &self.curve.thrust_n, self.bt[i])).powi(2));
+            let off = (from..to)
+                .map(|i| (self.bf[i] - curve::at(&self.curve.time_s, &self.curve.thrust_n, self.bt[i])).powi(2));
             (off.sum::<f64>() / (to - from).max(1) as f64).sqrt()
         };
         let moved = |c: &Crossing| if c.slope > 0.0 && c.slope.is_finite() { swing(c.time_s) / c.slope } else { 0.0 };

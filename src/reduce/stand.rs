@@ -80,8 +80,7 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     }
     let t = &record.time_s[zero.window.clone()];
     let mut readings = zero.thrust_n.clone();
-    let impossible =
-        response::impossible(t, &readings, stand.frequency_hz, super::zero::sample_noise(zero));
+    let impossible = response::impossible(t, &readings, stand.frequency_hz, super::zero::sample_noise(zero));
     for (i, value) in &impossible {
         readings[*i] = *value;
     }
@@ -126,11 +125,7 @@ fn lighten(stand: &mut Stand, t: &[f64], f: &[f64], inside: std::ops::Range<usiz
     let low = f[..inside.end].iter().rposition(|v| *v > 0.1 * highest).unwrap_or(inside.end - 1);
     let last_s = t[t.len() - 1];
     let rings = [t[low], end_s].map(|from| ringing::after(t, f, noise, from, last_s, least));
-    let Some(ring) = rings
-        .into_iter()
-        .flatten()
-        .min_by(|a, b| a.frequency_u_hz.total_cmp(&b.frequency_u_hz))
-    else {
+    let Some(ring) = rings.into_iter().flatten().min_by(|a, b| a.frequency_u_hz.total_cmp(&b.frequency_u_hz)) else {
         return;
     };
     let factor = ring.frequency_hz / stand.frequency_hz;

@@ -41,13 +41,14 @@ pub fn random_scenario(seed: u64) -> Scenario {
 pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
     let mut rng = ChaCha8Rng::seed_from_u64(seed.wrapping_mul(0x9e37_79b9_7f4a_7c15) ^ kind as u64);
     // All else as on a stand whose mass stays.
-    let (lighter, kind) = (kind == Kind::RingingLighter, if kind == Kind::RingingLighter { Kind::Ringing } else { kind });
+    let (lighter, kind) =
+        (kind == Kind::RingingLighter, if kind == Kind::RingingLighter { Kind::Ringing } else { kind });
     let mut draw = Draw { rng: &mut rng };
     let rate_hz = match kind {
         Kind::Plain => draw.one_of(&[80.0, 100.0, 200.0, 300.0, 500.0, 1000.0, 1000.0, 2000.0, 5000.0, 10_000.0]),
         Kind::Averaging10Hz => 10.0,
         Kind::Averaging80Hz => 80.0,
-        Kind::Noisy | Kind::Ringing | Kind::Truncated => 1000.0,
+        Kind::Noisy | Kind::Ringing | Kind::RingingLighter | Kind::Truncated => 1000.0,
     };
     let averaging_s = match kind {
         Kind::Averaging10Hz | Kind::Averaging80Hz => 1.0 / rate_hz,
@@ -67,7 +68,7 @@ pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
     match kind {
         Kind::Noisy => noise = 0.04,
         Kind::Averaging10Hz => noise = draw.log_range(2e-4, 1e-3),
-        Kind::Averaging80Hz | Kind::Ringing => noise = noise.min(3e-3),
+        Kind::Averaging80Hz | Kind::Ringing | Kind::RingingLighter => noise = noise.min(3e-3),
         Kind::Truncated => noise = noise.min(5e-3),
         Kind::Plain => {}
     }

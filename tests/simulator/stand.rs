@@ -128,7 +128,13 @@ pub fn second_order(force: &[f64], step_s: f64, frequency_hz: f64, damping: f64,
 
 /// The same for a mass that falls: `inertia` is that of each sample over the first, kept over the step that ends there. Spring and
 /// dashpot stay, so that w goes with 1 / sqrt(inertia) and z with w.
-pub fn second_order_lightening(force: &[f64], inertia: &[f64], step_s: f64, frequency_hz: f64, damping: f64) -> Vec<f64> {
+pub fn second_order_lightening(
+    force: &[f64],
+    inertia: &[f64],
+    step_s: f64,
+    frequency_hz: f64,
+    damping: f64,
+) -> Vec<f64> {
     let Some(&first) = force.first() else { return Vec::new() };
     let (mut y, mut v) = (first, 0.0);
     let mut out = vec![y];
