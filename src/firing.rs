@@ -139,6 +139,20 @@ pub struct BudgetLine {
     pub standard_uncertainty: f64,
     /// Share of the figure's variance, 0 to 1.
     pub share: f64,
+    /// What would make the largest sources smaller.
+    #[serde(skip_serializing_if = "Option::is_none", default)]
+    pub improvement: Option<Improvement>,
+}
+
+/// What to do about a source of error, and what that would bring.
+#[derive(Debug, Clone, PartialEq, Serialize, Deserialize)]
+pub struct Improvement {
+    /// In words, with its numbers.
+    pub advice: String,
+    /// What to do, without numbers.
+    pub remedy: String,
+    /// Half-width of the 95 % interval if this source's error were half as large, in the unit of the figure.
+    pub half_width_95_if_halved: f64,
 }
 
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]

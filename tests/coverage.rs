@@ -32,7 +32,7 @@ fn fire(kind: Kind, seed: u64) -> Outcome {
     let mut scenario = random_scenario_kind(kind, seed);
     let mut rng = rand_chacha::ChaCha8Rng::seed_from_u64(seed.wrapping_mul(31) ^ kind as u64);
     scenario.cell.weight_tolerance = 1e-3;
-    let loose_clock = seed % 2 == 0;
+    let loose_clock = seed.is_multiple_of(2);
     if loose_clock {
         scenario.logger.clock_error = LOOSE_CLOCK * rng.random_range(-1.0..1.0);
         scenario.logger.clock_tolerance = Some(format!("{} %", 100.0 * LOOSE_CLOCK));

@@ -9,6 +9,7 @@ use super::{Calibrated, Calibration, ErrorDirection, ErrorShape, ScaleSource};
 use crate::problem::Problem;
 use crate::quantity::{Dimension, Unit};
 use crate::run::Gravity;
+use crate::uncertainty::propagation;
 use nalgebra::{DMatrix, DVector};
 
 /// One point as listed.
@@ -117,7 +118,11 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
             let size = relative / 3f64.sqrt();
             errors.push(ErrorDirection { source: ScaleSource::Weights, shape: ErrorShape::Relative(size) });
         }
-        _ => push_directions(&mut errors, ScaleSource::Weights, &gram(&changes, choice.degree + 1), &choice.fit),
+        // Each weight by itself: its limits are then the source's own.
+        _ => errors.extend(changes.iter().map(|change| ErrorDirection {
+            source: ScaleSource::Weights,
+            shape: ErrorShape::Coefficients(choice.fit.unscale(change)),
+        })),
     }
     if points.by_mass() {
         let gravity = points.gravity.standard_uncertainty / points.gravity.value_m_s2;
@@ -223,17 +228,12 @@ fn gram(changes: &[DVector<f64>], terms: usize) -> DMatrix<f64> {
     changes.iter().fold(DMatrix::zeros(terms, terms), |sum, change| sum + change * change.transpose())
 }
 
-/// Independent directions of a covariance in the scaled coefficients: its eigenvectors, each one standard uncertainty long.
+/// Independent directions of a covariance in the scaled coefficients.
 fn push_directions(errors: &mut Vec<ErrorDirection>, source: ScaleSource, covariance: &DMatrix<f64>, fit: &Fit) {
-    let eigen = covariance.clone().symmetric_eigen();
-    let largest = eigen.eigenvalues.iter().copied().fold(0.0, f64::max);
-    for (at, variance) in eigen.eigenvalues.iter().enumerate() {
-        // below this an eigenvalue is rounding, and may be negative
-        if *variance > 1e-14 * largest {
-            let direction = eigen.eigenvectors.column(at) * variance.sqrt();
-            errors.push(ErrorDirection { source, shape: ErrorShape::Coefficients(fit.unscale(&direction)) });
-        }
-    }
+    errors.extend(propagation::directions(covariance).into_iter().map(|direction| ErrorDirection {
+        source,
+        shape: ErrorShape::Coefficients(fit.unscale(&DVector::from_vec(direction))),
+    }));
 }
 
 /// What the next degree could add beyond the heaviest weight, or on the side where no weight was: its coefficient as the points give it, and its standard

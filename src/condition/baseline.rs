@@ -44,7 +44,9 @@ impl Baseline {
 
     /// Standard uncertainty of the shift.
     pub fn shift_u_n(&self) -> Option<f64> {
-        Some(self.after?.level_u.hypot(self.before?.level_u))
+        let (after, before) = (self.after?, self.before?);
+        let variance = after.level_u.powi(2) + before.level_u.powi(2) - 2.0 * before.level_covariance;
+        Some(variance.max(0.0).sqrt())
     }
 
     /// Zero at `time_s`, when `fraction` of the impulse has been delivered.
@@ -95,6 +97,7 @@ mod tests {
             slope_per_s,
             level_u: 0.1,
             slope_u: 0.0,
+            level_covariance: 0.0,
             sample_sd: 1.0,
             low_frequency_density: 0.0,
             samples: 100,
@@ -111,6 +114,17 @@ mod tests {
         // Half the time, nine tenths of the impulse: -0.5 of drift and -4.5 of weight.
         assert!((b.at(2.0, 0.9) - 5.0).abs() < 1e-12);
         assert_eq!(b.shift_n(), Some(-6.0));
+    }
+
+    /// One line through both: an error of its slope lifts one level and lowers the other, and the shift takes both.
+    #[test]
+    fn the_shift_knows_what_its_ends_share() {
+        let shared = |covariance: f64| {
+            let fit = QuietFit { level_covariance: covariance, ..level(0.0, 1.0, 0.0) };
+            Baseline::new(Some(fit), Some(fit), 1.0, 3.0, 0.0).shift_u_n().expect("a shift")
+        };
+        assert!((shared(0.0) - 0.1 * 2f64.sqrt()).abs() < 1e-12);
+        assert!((shared(-0.01) - 0.2).abs() < 1e-12 && shared(0.01) < 1e-6);
     }
 
     #[test]

@@ -14,7 +14,8 @@ pub struct PeakFit {
     pub position: f64,
     pub value: f64,
     pub standard_error: f64,
-    /// Standard deviation of the values among the stretches that do nearly as well: what the choice among them leaves open.
+    /// What the choice of the stretch leaves open: the standard deviation of the values among those that do nearly as well, and a shoulder
+    /// that may hide at its end.
     pub choice_u: f64,
     /// Samples used.
     pub samples: usize,
@@ -147,7 +148,7 @@ pub fn fit(data: &[f64], top: usize, scatter: &Scatter) -> Option<PeakFit> {
     let n = candidates.len() as f64;
     let mean = candidates.iter().map(|c| c.value).sum::<f64>() / n;
     let choice_u = (candidates.iter().map(|c| (c.value - mean).powi(2)).sum::<f64>() / n).sqrt();
-    Some(PeakFit { choice_u, ..*chosen })
+    Some(PeakFit { choice_u: choice_u.hypot(chosen.choice_u), ..*chosen })
 }
 
 /// What a peak between two samples may add to the highest sample `top`, and the standard uncertainty of that.
@@ -247,7 +248,17 @@ fn piece(ls: &Sums, rs: &Sums, left: usize, right: usize, order: usize, scatter:
     let variance =
         scatter.variance_over(length) * (g.transpose() * inverse * g)[0].max(0.0) + scatter.slow_variance(length);
     let standard_error = variance.sqrt();
-    Some(PeakFit { position: at, value: value(at), standard_error, choice_u: 0.0, samples: left + right + 1 })
+    // At an end of the stretch the curve may bend away from the piece for a while before that shows: a shoulder of m samples stays
+    // within the limit of a part while slope · m / 3 < limit · σ / √m, and the piece's end then stands too high by up to half of slope · m.
+    let slope = (c[1] / h + 2.0 * c[2] * at / (h * h)).abs();
+    let at_end = order > 0 && (at == from || at == to);
+    let shoulder_u = if at_end && slope > 0.0 {
+        let length = (3.0 * PART_LIMIT * sigma / slope).powf(2.0 / 3.0).min(n);
+        slope * length / 2.0 / 3f64.sqrt()
+    } else {
+        0.0
+    };
+    Some(PeakFit { position: at, value: value(at), standard_error, choice_u: shoulder_u, samples: left + right + 1 })
 }
 
 #[cfg(test)]

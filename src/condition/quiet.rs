@@ -15,6 +15,8 @@ pub struct QuietFit {
     /// Standard uncertainty of the level at `at_s`, with the noise's own correlation.
     pub level_u: f64,
     pub slope_u: f64,
+    /// Covariance of this level with that of the other stretch, where one line was fitted to both; else nil.
+    pub level_covariance: f64,
     /// Standard deviation of single samples about the line.
     pub sample_sd: f64,
     /// Two-sided spectral density of the noise at low frequency, unit² s: an integral over T s has variance density·T.
@@ -27,6 +29,20 @@ impl QuietFit {
     pub fn level_at(&self, time_s: f64) -> f64 {
         self.level + self.slope_per_s * (time_s - self.at_s)
     }
+
+    /// Degrees of freedom behind `level_u`: those of the samples where their noise is white, those of the batch means that showed
+    /// its correlation where it is not.
+    pub fn degrees_of_freedom(&self) -> f64 {
+        let white = self.sample_sd * self.sample_sd * self.duration_s / self.samples.max(1) as f64;
+        let count =
+            if self.low_frequency_density > white * (1.0 + 1e-9) { batches(self.samples) } else { self.samples };
+        count.saturating_sub(2).max(1) as f64
+    }
+}
+
+/// Stretches whose means show the noise's correlation.
+fn batches(samples: usize) -> usize {
+    (samples / 8).min(24)
 }
 
 /// How many standard errors a slope must reach before it is used up to the edge of its own stretch. Low, since a slope left
@@ -57,7 +73,7 @@ pub fn fit_with(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64, ev
     let sd_about = |slope: f64, dof: f64| ((0..n).map(|i| residual(i, slope).powi(2)).sum::<f64>() / dof).sqrt();
     let sd_line = sd_about(slope, (nf - 2.0).max(1.0));
     // Batch means carry whatever correlation the noise has; without enough samples the noise is taken as white.
-    let batches = (n / 8).min(24);
+    let batches = batches(n);
     let inflation = |slope: f64, sd: f64| -> f64 {
         if batches < 6 || sd <= 0.0 {
             return 1.0;
@@ -82,6 +98,7 @@ pub fn fit_with(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64, ev
         slope_per_s: used,
         level_u,
         slope_u: slope_error,
+        level_covariance: 0.0,
         sample_sd: sd,
         low_frequency_density: sd * sd * factor * duration_s / nf,
         samples: n,
@@ -154,16 +171,18 @@ pub fn fit_together(
         return None;
     }
     let covariance = inverse * (within * inflation);
+    let row = |k: usize| Vector3::new(1.0, at_s[k] - at_s[0], if k == 1 && free { 1.0 } else { 0.0 });
+    let between = |k: usize, l: usize| (row(k).transpose() * covariance * row(l))[0];
     let at = |k: usize| {
         let x = at_s[k] - at_s[0];
-        let g = Vector3::new(1.0, x, if k == 1 && free { 1.0 } else { 0.0 });
         let shift = if k == 1 { step.unwrap_or(c[2]) } else { 0.0 };
         QuietFit {
             at_s: at_s[k],
             level: c[0] + c[1] * x + shift,
             slope_per_s: c[1],
-            level_u: (g.transpose() * covariance * g)[0].max(0.0).sqrt(),
+            level_u: between(k, k).max(0.0).sqrt(),
             slope_u: covariance[(1, 1)].max(0.0).sqrt(),
+            level_covariance: between(0, 1),
             ..apart[k]
         }
     };
@@ -199,6 +218,8 @@ const TIME_CONSTANTS: (f64, f64, f64) = (0.3, 60.0, 1.25);
 /// nothing in common must not fall short of them by more than this.
 const THERMAL_EVIDENCE: f64 = 16.0;
 const THERMAL_WORSE: f64 = 6.0;
+/// The bend itself must be seen: a plain step must leave so many variances more.
+const BEND_EVIDENCE: f64 = 9.0;
 
 /// Looks for warmth in two quiet stretches: flat or steadily drifting before ignition, bending after the burn. `step` is added to the
 /// later stretch by known causes. `at_s`: ignition and the end of the burst. `None` where the evidence does not ask for it.
@@ -272,7 +293,12 @@ pub fn fit_thermal(
         tau *= TIME_CONSTANTS.2;
     }
     let (tau, c, inverse, rss) = best?;
-    if line - rss < THERMAL_EVIDENCE * variance || rss - own > THERMAL_WORSE * variance {
+    // Warmth that has come before the quiet record begins again is no more than a step somewhere in between.
+    let (_, _, stepped) = solve(Some(1e-6))?;
+    if line - rss < THERMAL_EVIDENCE * variance
+        || stepped - rss < BEND_EVIDENCE * variance
+        || rss - own > THERMAL_WORSE * variance
+    {
         return None;
     }
     let x = at_s[1] - at_s[0];
@@ -363,5 +389,9 @@ mod tests {
         }
         let q = fit(&t, &y, 0..2000, 1.0).expect("fit");
         assert!(q.level_u > 2.0 * q.sample_sd / 2000f64.sqrt(), "{q:?}");
+        // 24 batches about a line, against 2000 samples about it where the noise is white.
+        assert_eq!(q.degrees_of_freedom(), 22.0);
+        let white = QuietFit { low_frequency_density: q.sample_sd.powi(2) * q.duration_s / 2000.0, ..q };
+        assert_eq!(white.degrees_of_freedom(), 1998.0);
     }
 }

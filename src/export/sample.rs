@@ -108,8 +108,23 @@ pub(crate) fn firing() -> Firing {
         uncertainty_budget: BTreeMap::from([(
             "total_impulse".to_owned(),
             vec![
-                BudgetLine { source: "calibration".to_owned(), standard_uncertainty: 1.9, share: 0.89 },
-                BudgetLine { source: "baseline".to_owned(), standard_uncertainty: 0.66, share: 0.11 },
+                BudgetLine {
+                    source: "calibration".to_owned(),
+                    standard_uncertainty: 1.9,
+                    share: 0.89,
+                    improvement: Some(Improvement {
+                        advice: "use better weights: half of this error would leave ± 2.3 instead of ± 3.9 N.s"
+                            .to_owned(),
+                        remedy: "use better weights".to_owned(),
+                        half_width_95_if_halved: 2.27,
+                    }),
+                },
+                BudgetLine {
+                    source: "baseline".to_owned(),
+                    standard_uncertainty: 0.66,
+                    share: 0.11,
+                    improvement: None,
+                },
             ],
         )]),
         checks: vec![

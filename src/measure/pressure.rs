@@ -48,7 +48,7 @@ impl Line {
     fn meets(&self, other: &Line) -> Option<(f64, f64)> {
         let t = (other.value - self.value + self.slope * self.time_s - other.slope * other.time_s)
             / (self.slope - other.slope);
-        t.is_finite().then(|| (t, self.value + self.slope * (t - self.time_s)))
+        t.is_finite().then_some((t, self.value + self.slope * (t - self.time_s)))
     }
 }
 

@@ -101,8 +101,7 @@ fn come_to_rest(event: &Event, segmentation: &Segmentation, force_n: &[f64]) -> 
     let block = segmentation.block.max(1);
     let from = (event.start..last)
         .step_by(block)
-        .filter(|i| (mean(&force_n[*i..(*i + block).min(event.end)]) - level).abs() > near)
-        .next_back()
+        .rfind(|i| (mean(&force_n[*i..(*i + block).min(event.end)]) - level).abs() > near)
         .map_or(event.start, |i| (i + block).min(last));
     Event { end: from, cut_at_end: false, level_after: level, ..*event }
 }

@@ -11,7 +11,7 @@ use crate::measure::pressure::{self, WebTime};
 use crate::problem::Problem;
 use crate::run::{PressureReference, Role};
 use crate::uncertainty::distribution::Shape;
-use crate::uncertainty::effects::{Acts, Effect};
+use crate::uncertainty::effects::Effect;
 
 /// Mean air pressure at sea level, Pa, and how it falls with height in the troposphere (ISO 2533:1975, standard atmosphere; from
 /// memory).
@@ -254,56 +254,41 @@ pub(super) fn measure(record: &Record<'_>, zero: &Zero, thrust: &Thrust<'_>) -> 
     }))
 }
 
-/// Makes a figure of its key, value, unit, effects, and whether its scale is known.
-pub(super) type MakeFigure<'a> = dyn FnMut(&str, f64, &str, &dyn Fn(&Effect) -> f64, bool) -> Figure + 'a;
+/// Makes a figure of its key, value and unit, and whether its scale is known.
+pub(super) type MakeFigure<'a> = dyn FnMut(&'static str, f64, &str, bool) -> Figure + 'a;
 
 impl Pressure {
-    /// Puts the figures into `q` and the amounts they are made of into `a`. `mass`: propellant in kg, and whether its error is known.
-    pub fn figures(
-        &self,
-        q: &mut Quantities,
-        a: &mut Effect,
-        web_thickness_m: Option<f64>,
-        mass: Option<(f64, bool)>,
-        thrust_known: bool,
-        figure: &mut MakeFigure<'_>,
-    ) {
+    /// Puts what the figures are made of into `a`.
+    pub fn amounts(&self, a: &mut Effect, web_thickness_m: Option<f64>) {
         a.peak_pressure = self.peak_pa;
         a.pressure_action = self.action_integral_pa_s;
         a.pressure_total = self.total_integral_pa_s;
         a.throat_area = self.throat_area_m2.unwrap_or(0.0);
         a.web_time = self.web_s.unwrap_or(0.0);
         a.web_thickness = web_thickness_m.unwrap_or(0.0);
-        let a = &*a;
-        let clock = |e: &Effect| if let Acts::StretchesTime(r) = e.acts { r } else { 0.0 };
-        q.peak_pressure = Some(figure("peak_pressure", a.peak_pressure, "Pa", &|e| e.peak_pressure, self.known));
-        let mean = a.pressure_action / a.action_time;
-        // The clock stretches the integral and the time alike.
-        let effect = |e: &Effect| {
-            let time = if clock(e) == 0.0 { e.action_time / a.action_time } else { 0.0 };
-            mean * (e.pressure_action / a.pressure_action - time)
-        };
-        q.mean_pressure = Some(figure("mean_pressure", mean, "Pa", &effect, self.known));
+    }
+
+    /// Puts the figures made of the amounts `a` into `q`. `mass`: propellant in kg, and whether its error is known.
+    pub fn figures(
+        &self,
+        q: &mut Quantities,
+        a: &Effect,
+        mass: Option<(f64, bool)>,
+        thrust_known: bool,
+        figure: &mut MakeFigure<'_>,
+    ) {
+        q.peak_pressure = Some(figure("peak_pressure", a.peak_pressure, "Pa", self.known));
+        q.mean_pressure = Some(figure("mean_pressure", a.pressure_action / a.action_time, "Pa", self.known));
         if let (Some(area), Some((kg, known))) = (self.throat_area_m2, mass) {
             let c = pressure::characteristic_velocity(area, a.pressure_total, kg);
-            let effect = |e: &Effect| {
-                let shares = e.throat_area / area + e.pressure_total / a.pressure_total - e.propellant_mass / kg;
-                c * (shares + clock(e))
-            };
-            q.characteristic_velocity = Some(figure("characteristic_velocity", c, "m/s", &effect, self.known && known));
+            q.characteristic_velocity = Some(figure("characteristic_velocity", c, "m/s", self.known && known));
         }
         if let Some(area) = self.throat_area_m2 {
             let c = pressure::thrust_coefficient(a.action_impulse, area, a.pressure_action);
-            let effect = |e: &Effect| {
-                let impulse = if clock(e) == 0.0 { e.action_impulse / a.action_impulse } else { 0.0 };
-                c * (impulse - e.throat_area / area - e.pressure_action / a.pressure_action)
-            };
-            q.thrust_coefficient = Some(figure("thrust_coefficient", c, "1", &effect, self.known && thrust_known));
+            q.thrust_coefficient = Some(figure("thrust_coefficient", c, "1", self.known && thrust_known));
         }
-        if let (Some(web), Some(time)) = (web_thickness_m, self.web_s) {
-            let rate = web / time;
-            let effect = |e: &Effect| rate * (e.web_thickness / web - e.web_time / time - clock(e));
-            q.burn_rate = Some(figure("burn_rate", rate, "m/s", &effect, true));
+        if let (true, Some(time)) = (a.web_thickness > 0.0, self.web_s) {
+            q.burn_rate = Some(figure("burn_rate", a.web_thickness / time, "m/s", true));
         }
         if self.clipped {
             for figure in

@@ -11,6 +11,8 @@ use crate::measure::integral;
 use crate::run::Orientation;
 use crate::uncertainty::distribution::Shape;
 use crate::uncertainty::effects::{Acts, Effect};
+use crate::uncertainty::propagation;
+use nalgebra::DMatrix;
 
 /// Half the stretch over which the swing of the stand is judged, s.
 const SWING_S: f64 = 0.015;
@@ -46,9 +48,17 @@ impl Work<'_> {
         if let Some(Some(u)) = mass_u
             && self.record.inputs.run.motor.propellant_mass_kg.is_some()
         {
-            let limits = self.record.inputs.run.motor.propellant_mass_kg.is_some_and(|m| m.limits.is_some());
-            let shape = if limits { Shape::Rectangular } else { Shape::Normal };
+            let shape = Shape::of_stated(self.record.inputs.run.motor.propellant_mass_kg.and_then(|m| m.limits));
             effects.push(Effect { propellant_mass: u, ..Effect::of("propellant mass").shaped(shape) });
+        }
+        let motor = &self.record.inputs.run.motor;
+        for (weighed, sign) in [(motor.mass_before_kg, 1.0), (motor.mass_after_kg, -1.0)] {
+            if let Some((mass, u)) = weighed.and_then(|m| Some((m, m.standard_uncertainty?))) {
+                effects.push(Effect {
+                    expelled_mass: sign * u,
+                    ..Effect::of("weighing").shaped(Shape::of_stated(mass.limits))
+                });
+            }
         }
         if let Some(tail) = self.curve.tail {
             effects.push(Effect {
@@ -73,6 +83,13 @@ impl Work<'_> {
             rise_time: self.rise_time.unwrap_or(0.0),
             ignition_delay: self.delay.unwrap_or(0.0),
             propellant_mass: mass_kg.unwrap_or(0.0),
+            expelled_mass: match (
+                self.record.inputs.run.motor.mass_before_kg,
+                self.record.inputs.run.motor.mass_after_kg,
+            ) {
+                (Some(before), Some(after)) => before.value - after.value,
+                _ => 0.0,
+            },
             extrapolated_impulse: self.curve.tail.map_or(0.0, |tail| tail.impulse),
             action_impulse: integral::between(self.bt, self.bf, self.action.start.time_s, self.action.end.time_s),
             ..Effect::default()
@@ -86,71 +103,72 @@ impl Work<'_> {
         let mut effects = Vec::new();
         let mut known = true;
         let peak_index = self.bt.partition_point(|t| *t < self.curve.peak.time_s).min(self.bt.len() - 1);
-        for channel in &record.channels {
+        let g = &record.gravity;
+        let gravity_relative = g.standard_uncertainty / g.value_m_s2;
+        let mut site_gravity = Effect::of("gravity");
+        for (number, channel) in record.channels.iter().enumerate() {
             let Some(errors) = &channel.calibration.errors else {
                 known = false;
                 continue;
             };
             let force = &channel.force_n[self.zero.burst.clone()];
             let rest = self.rest_of(channel);
+            // The part of the weight shift that this cell carries, as it reads it, and the whole.
+            let (shift, whole_shift) = self.weight_shift(force[peak_index] - rest);
             for direction in errors {
                 let scale = record.sign / record.force_ratio;
-                let at_rest = channel.calibration.force_error_n(direction, rest);
-                let change: Vec<f64> = force
-                    .iter()
-                    .map(|f| scale * (channel.calibration.force_error_n(direction, *f) - at_rest))
-                    .collect();
-                let mass_share = match (&self.zero.shift_mass_kg, record.inputs.run.motor.propellant_mass_kg) {
-                    (Some((kg, _)), None) => {
-                        let span = force[peak_index] - rest;
-                        let relative =
-                            if span != 0.0 { change[peak_index] * record.force_ratio / span.abs() } else { 0.0 };
-                        kg * relative
-                    }
-                    _ => 0.0,
-                };
-                let shape = match (direction.source, &direction.shape) {
-                    (ScaleSource::Fit, _) => {
-                        Shape::of_estimate(channel.calibration.fit_degrees_of_freedom.unwrap_or(f64::INFINITY))
-                    }
-                    // Limits of one error shared by all.
-                    (ScaleSource::Stated, _) | (ScaleSource::Weights, ErrorShape::Relative(_)) => Shape::Rectangular,
-                    _ => Shape::Normal,
-                };
-                effects.push(Effect {
-                    shape,
+                let error = |f: f64| channel.calibration.force_error_n(direction, f);
+                let at_rest = error(rest);
+                let change: Vec<f64> = force.iter().map(|f| scale * (error(*f) - at_rest)).collect();
+                let between = |from: f64, to: f64| integral::between(self.bt, &change, from, to);
+                let start_s = self.burn.start.time_s;
+                let effect = Effect {
                     total_impulse: integral::trapezoid(self.bt, &change),
-                    burn_impulse: integral::between(self.bt, &change, self.burn.start.time_s, self.burn.end.time_s),
-                    action_impulse: integral::between(
-                        self.bt,
-                        &change,
-                        self.action.start.time_s,
-                        self.action.end.time_s,
-                    ),
+                    burn_impulse: between(start_s, self.burn.end.time_s),
+                    action_impulse: between(self.action.start.time_s, self.action.end.time_s),
                     peak_thrust: change[peak_index],
-                    initial_thrust: integral::between(
-                        self.bt,
-                        &change,
-                        self.burn.start.time_s,
-                        self.burn.start.time_s + self.initial_s,
-                    ) / self.initial_s,
-                    propellant_mass: mass_share,
-                    ..Effect::of(match direction.source {
-                        ScaleSource::Fit => "calibration fit",
-                        ScaleSource::Weights => "weights",
-                        ScaleSource::Gravity => "gravity",
-                        ScaleSource::Buoyancy => "air buoyancy",
-                        ScaleSource::Extrapolation => "beyond the heaviest weight",
-                        ScaleSource::Stated => "stated accuracy",
-                    })
-                });
+                    initial_thrust: between(start_s, start_s + self.initial_s) / self.initial_s,
+                    propellant_mass: self.mass_of_shift().map_or(0.0, |kg| {
+                        if whole_shift == 0.0 { 0.0 } else { kg * (error(rest + shift) - at_rest) / whole_shift }
+                    }),
+                    ..Effect::default()
+                };
+                let dof = channel.calibration.fit_degrees_of_freedom.unwrap_or(f64::INFINITY);
+                let (source, shape, scatter) = match direction.source {
+                    // All coefficients of a fit are judged by one scatter.
+                    ScaleSource::Fit => ("calibration fit", Shape::of_estimate(dof), Some(number)),
+                    ScaleSource::Weights => ("weights", Shape::Rectangular, None),
+                    ScaleSource::Gravity => {
+                        if direction.shape == ErrorShape::Relative(gravity_relative) {
+                            // Gravity of the run's own site: one error for all cells, and none of it in a mass, which is the
+                            // force divided by the same gravity.
+                            site_gravity.total_impulse += effect.total_impulse;
+                            site_gravity.burn_impulse += effect.burn_impulse;
+                            site_gravity.action_impulse += effect.action_impulse;
+                            site_gravity.peak_thrust += effect.peak_thrust;
+                            site_gravity.initial_thrust += effect.initial_thrust;
+                            continue;
+                        }
+                        ("gravity", Shape::Normal, None)
+                    }
+                    ScaleSource::Buoyancy => ("air buoyancy", Shape::Rectangular, None),
+                    ScaleSource::Extrapolation => ("beyond the heaviest weight", Shape::Normal, None),
+                    ScaleSource::Stated => ("stated accuracy", Shape::Rectangular, None),
+                };
+                effects.push(Effect { source: source.to_string(), shape, scatter, ..effect });
             }
         }
+        if let Some(kg) = self.mass_of_shift()
+            && site_gravity.is_nil()
+        {
+            // The scale owes nothing to the site's gravity, so the mass does.
+            site_gravity.propellant_mass = -gravity_relative * kg;
+        }
+        effects.push(site_gravity);
         if let Some(u) = record.inputs.run.stand.force_ratio.and_then(|r| r.standard_uncertainty) {
-            let limits = record.inputs.run.stand.force_ratio.is_some_and(|r| r.limits.is_some());
             let share = u / record.force_ratio;
             effects.push(Effect {
-                shape: if limits { Shape::Rectangular } else { Shape::Normal },
+                shape: Shape::of_stated(record.inputs.run.stand.force_ratio.and_then(|r| r.limits)),
                 acts: Acts::DividesForce(share),
                 ..self.relative("force ratio", -share)
             });
@@ -158,10 +176,26 @@ impl Work<'_> {
         (effects, known)
     }
 
+    /// Mass that the weight shift gave, kg, where it was not weighed.
+    fn mass_of_shift(&self) -> Option<f64> {
+        match self.record.inputs.run.motor.propellant_mass_kg {
+            Some(_) => None,
+            None => self.zero.shift_mass_kg.map(|(kg, _)| kg),
+        }
+    }
+
+    /// By how much the lost weight moved the force of a cell that `span` of the peak fell to, and of all cells, N as they read it.
+    fn weight_shift(&self, span: f64) -> (f64, f64) {
+        let (record, kg) = (self.record, self.mass_of_shift().unwrap_or(0.0));
+        let downward = if record.orientation == Orientation::NozzleDown { 1.0 } else { -1.0 };
+        let whole = record.sign * downward * kg * record.gravity.value_m_s2 * record.force_ratio;
+        let thrust = record.sign * record.force_ratio * self.curve.peak.thrust_n;
+        (whole * span / thrust, whole)
+    }
+
     fn relative(&self, source: &str, r: f64) -> Effect {
-        let from_force = self.record.inputs.run.motor.propellant_mass_kg.is_none();
         Effect {
-            propellant_mass: if from_force { self.zero.shift_mass_kg.map_or(0.0, |(kg, _)| r * kg) } else { 0.0 },
+            propellant_mass: self.mass_of_shift().map_or(0.0, |kg| r * kg),
             action_impulse: r * self.found(None).action_impulse,
             total_impulse: r * self.total_impulse,
             burn_impulse: r * self.burn_impulse,
@@ -193,7 +227,8 @@ impl Work<'_> {
             action_time: -moved(&self.action.start) - moved(&self.action.end),
             peak_thrust: -course(self.curve.peak.time_s),
             initial_thrust: integral::between(self.bt, &change, start.time_s, start.time_s + self.initial_s)
-                / self.initial_s,
+                / self.initial_s
+                + moved(start) * self.initial_per_second(),
             ..Effect::of(source)
         }
     }
@@ -209,20 +244,30 @@ impl Work<'_> {
             _ => 0.0,
         };
         let mut effects = Vec::new();
-        if let Some(before) = &baseline.before {
-            let u = before.level_u;
+        // Levels fitted apart err apart; one line through both has errors that move both.
+        let levels = match (&baseline.before, &baseline.after) {
+            (Some(before), Some(after)) if before.level_covariance != 0.0 => {
+                let (b, a, both) = (before.level_u.powi(2), after.level_u.powi(2), before.level_covariance);
+                let dof = before.degrees_of_freedom().min(after.degrees_of_freedom());
+                let directions = propagation::directions(&DMatrix::from_row_slice(2, 2, &[b, both, both, a]));
+                directions.iter().map(|d| ("zero", [d[0], d[1]], dof)).collect()
+            }
+            (before, after) => {
+                let mut apart = Vec::new();
+                apart.extend(before.map(|q| ("zero before", [q.level_u, 0.0], q.degrees_of_freedom())));
+                apart.extend(after.map(|q| ("zero after", [0.0, q.level_u], q.degrees_of_freedom())));
+                apart
+            }
+        };
+        for (source, [before, after], dof) in levels {
+            let course = |t: f64| {
+                let (of_before, of_after) = baseline.sensitivity(t);
+                before * of_before + after * of_after
+            };
             effects.push(Effect {
-                propellant_mass: u * mass_per_newton,
-                shape: Shape::of_estimate(before.samples.saturating_sub(2) as f64),
-                ..self.zero_effect("zero before", |t| u * baseline.sensitivity(t).0)
-            });
-        }
-        if let Some(after) = &baseline.after {
-            let u = after.level_u;
-            effects.push(Effect {
-                propellant_mass: -u * mass_per_newton,
-                shape: Shape::of_estimate(after.samples.saturating_sub(2) as f64),
-                ..self.zero_effect("zero after", |t| u * baseline.sensitivity(t).1)
+                propellant_mass: (before - after) * mass_per_newton,
+                shape: Shape::of_estimate(dof),
+                ..self.zero_effect(source, course)
             });
         }
         if self.zero.drift_u_n > 0.0 {
@@ -245,7 +290,9 @@ impl Work<'_> {
                 ..Effect::of("noise")
             },
             Effect { peak_thrust: self.curve.peak.noise_u_n, ..Effect::of("noise at the peak") },
-            Effect { total_impulse: self.sampling_u(), burn_impulse: self.sampling_u(), ..Effect::of("sampling") },
+            // Mostly a jump at either end of the burn, each anywhere within an interval.
+            Effect { total_impulse: self.sampling_u(), burn_impulse: self.sampling_u(), ..Effect::of("sampling") }
+                .shaped(Shape::Triangular),
         ]
     }
 
@@ -276,46 +323,63 @@ impl Work<'_> {
 
     fn ends(&self, delay_u: Option<f64>) -> Vec<Effect> {
         let curve = self.curve;
+        // Noise, place between two samples (the middle likelier than the ends), and shape of a fast edge: one standard
+        // uncertainty of each, s.
         let instant = |c: &Crossing, level: f64, rising: bool| {
             if c.slope.is_infinite() {
-                return 0.0;
+                return [0.0; 3];
             }
             // The smoothing allows a bias of about the width of its own interval before it takes a shorter window.
             let error =
                 SMOOTHING_BIAS * curve::at(&curve.conditioned.time_s, &curve.conditioned.standard_error_n, c.time_s);
             let threshold = level * curve.peak.noise_u_n;
             let noise = self.time_for(c, level * curve.peak.thrust_n, error.hypot(threshold), rising);
-            // Within the interval of a crossing the middle is likelier than its ends (triangular).
             // The shape of a rise that passes within a few samples is known to a part of one interval only.
             let dt = curve.conditioned.interval_s;
             let steep = (c.slope * dt / (STEEP_SHARE * curve.peak.thrust_n)).min(1.0);
-            noise.hypot(c.sampling_half_width_s / 6f64.sqrt()).hypot(EDGE_SHARE * dt * steep)
+            [noise, c.sampling_half_width_s / 6f64.sqrt(), EDGE_SHARE * dt * steep]
         };
-        let (start_u, end_u) =
-            (instant(&self.burn.start, BURN_LEVEL, true), instant(&self.burn.end, BURN_LEVEL, false));
-        let (up_u, down_u) =
-            (instant(&self.action.start, ACTION_LEVEL, true), instant(&self.action.end, ACTION_LEVEL, false));
+        let start = instant(&self.burn.start, BURN_LEVEL, true);
+        let end = instant(&self.burn.end, BURN_LEVEL, false);
+        let up = instant(&self.action.start, ACTION_LEVEL, true);
+        let down = instant(&self.action.end, ACTION_LEVEL, false);
         let level_n = BURN_LEVEL * curve.peak.thrust_n;
+        let action_n = ACTION_LEVEL * curve.peak.thrust_n;
         let source = "interval ends";
-        vec![
-            Effect {
-                burn_time: -start_u,
-                burn_impulse: -level_n * start_u,
-                action_time: -up_u,
-                action_impulse: -ACTION_LEVEL * curve.peak.thrust_n * up_u,
-                rise_time: -up_u,
-                ignition_delay: delay_u.map_or(0.0, |u| u.hypot(start_u)),
-                ..Effect::of(source)
-            },
-            Effect {
-                burn_time: end_u,
-                burn_impulse: level_n * end_u,
-                action_time: down_u,
-                action_impulse: ACTION_LEVEL * curve.peak.thrust_n * down_u,
-                ..Effect::of(source)
-            },
-            Effect { rise_time: self.rise_time.map_or(0.0, |_| self.risen_u()), ..Effect::of(source) },
-        ]
+        let mut effects = Vec::new();
+        for (part, shape) in [Shape::Normal, Shape::Triangular, Shape::Normal].into_iter().enumerate() {
+            effects.push(Effect {
+                burn_time: -start[part],
+                burn_impulse: -level_n * start[part],
+                action_time: -up[part],
+                action_impulse: -action_n * up[part],
+                rise_time: -up[part],
+                initial_thrust: start[part] * self.initial_per_second(),
+                ignition_delay: delay_u.map_or(0.0, |_| start[part]),
+                ..Effect::of(source).shaped(shape)
+            });
+            effects.push(Effect {
+                burn_time: end[part],
+                burn_impulse: level_n * end[part],
+                action_time: down[part],
+                action_impulse: action_n * down[part],
+                ..Effect::of(source).shaped(shape)
+            });
+        }
+        effects.push(Effect { rise_time: self.rise_time.map_or(0.0, |_| self.risen_u()), ..Effect::of(source) });
+        // The signal changed anywhere between two samples.
+        effects.push(Effect {
+            ignition_delay: -delay_u.unwrap_or(0.0),
+            ..Effect::of("ignition signal").shaped(Shape::Rectangular)
+        });
+        effects
+    }
+
+    /// What the initial thrust gains when the start of its stretch is set later, N/s: thrust at the end for thrust at the start.
+    fn initial_per_second(&self) -> f64 {
+        let thrust = |time_s: f64| curve::at(&self.curve.time_s, &self.curve.thrust_n, time_s);
+        let start_s = self.burn.start.time_s;
+        (thrust(start_s + self.initial_s) - thrust(start_s)) / self.initial_s
     }
 
     /// What an error of the stand's frequency or damping does: T = x + 2 (ζ/ω) x′ + x″/ω² moves by −2 (δω/ω) (T − x) and by

@@ -53,6 +53,9 @@ const SLOPE_SEEN: f64 = 3.0;
 /// What of a slope's standard error over the burst may hide in either level where no drift is seen.
 const HIDDEN_DRIFT: f64 = 0.35;
 
+/// Time constants below this share of the burst are a tail's where the zero seems to fall.
+const TAIL_SHARE: f64 = 0.5;
+
 /// Rounds of zero, impulse and weight until they agree.
 const WEIGHT_ROUNDS: usize = 6;
 
@@ -77,15 +80,18 @@ pub fn correct(record: &Record<'_>) -> Zero {
     let thermal = match (&before, &after, known_step) {
         (Some(b), Some(a), Some(step)) => {
             quiet::fit_thermal(time_s, &record.force_n, [b.clone(), a.clone()], [start_s, end_s], step)
+                // A zero that comes down soon after the burn is the tail of the thrust fading.
+                .filter(|warm| warm.amplitude > 0.0 || warm.time_constant_s > TAIL_SHARE * burst_s)
         }
         _ => None,
     };
     let (before_fit, after_fit) = match (thermal, before_fit, after_fit) {
         (Some(warm), Some(b), Some(a)) => (
-            Some(QuietFit { level: warm.level, slope_per_s: warm.slope_per_s, ..b }),
+            Some(QuietFit { level: warm.level, slope_per_s: warm.slope_per_s, level_covariance: 0.0, ..b }),
             Some(QuietFit {
                 level: warm.at(end_s - start_s) + known_step.unwrap_or(0.0),
                 level_u: warm.level_after_u.max(a.level_u),
+                level_covariance: 0.0,
                 ..a
             }),
         ),
@@ -170,7 +176,14 @@ fn levels(
                         let n = r.len().max(1) as f64;
                         let mean = f[r.clone()].iter().sum::<f64>() / n;
                         let noise = (q.low_frequency_density / q.duration_s.max(f64::MIN_POSITIVE)).sqrt();
-                        QuietFit { at_s: at, level: mean, slope_per_s: 0.0, level_u: noise.hypot(hidden), ..q }
+                        QuietFit {
+                            at_s: at,
+                            level: mean,
+                            slope_per_s: 0.0,
+                            level_u: noise.hypot(hidden),
+                            level_covariance: 0.0,
+                            ..q
+                        }
                     };
                     let hidden = HIDDEN_DRIFT * b.slope_u * (at_s[1] - at_s[0]);
                     (Some(plain(b_range, b, at_s[0], hidden)), Some(plain(a_range, a, at_s[1], hidden)))

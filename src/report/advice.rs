@@ -16,7 +16,7 @@ pub fn for_check(id: &str) -> Option<&'static str> {
         "ringing" => "stiffen the stand, or give [stand] natural_frequency from a tap test",
         "noise" => "shield and ground the cell's cable; sample faster",
         "polarity" => "give the calibration the sign the stand has, or mount the cell the other way round",
-        "propellant_mass" => "weigh the propellant, or the motor before and after",
+        "propellant_mass" => "look at baseline_shift and at what may have fallen off; weigh the motor before and after",
         "check_load" => "calibrate again: the known weight did not read as it should",
         "other_bursts" => "see that the right burst was taken; [reduction] burst = N chooses another",
         "override" => "a person set this by hand; leave it out of run.toml to let the record decide",

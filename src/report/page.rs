@@ -106,7 +106,11 @@ fn budget(firing: &Firing, units: Units) -> Vec<Value> {
                 .iter()
                 .map(|line| {
                     let u = format!("{} {}", significant(line.standard_uncertainty / unit.size_si, 2), unit.symbol);
-                    context! { source => line.source.as_str(), u, share => fixed(line.share * 100.0, 1) }
+                    let remedy = line.improvement.as_ref().map(|improvement| {
+                        let half = significant(improvement.half_width_95_if_halved / unit.size_si, 2);
+                        format!("{}; half of this error would leave ± {half} {}", improvement.remedy, unit.symbol)
+                    });
+                    context! { source => line.source.as_str(), u, share => fixed(line.share * 100.0, 1), remedy }
                 })
                 .collect();
             Some(context! { name => entry.name, lines })
@@ -155,6 +159,7 @@ mod tests {
             "one sample at full scale",
             "1.9 N·s",
             "89.0 %",
+            "use better weights; half of this error would leave ± 2.3 N·s",
             &"ab".repeat(32),
             "not a certified one",
             "barricade",

@@ -3,7 +3,7 @@
 use super::advice;
 use super::figures::named;
 use super::units::{Units, fixed, percent, words};
-use crate::firing::{Firing, Status};
+use crate::firing::{Figure, Firing, Status};
 use std::path::Path;
 
 /// How the summary is to look.
@@ -16,7 +16,7 @@ pub struct View {
 
 const WIDTH: usize = 80;
 /// Checks beyond this many that are only cautions are counted, so that the summary fits on a screen.
-const MOST_CAUTIONS: usize = 4;
+const MOST_CAUTIONS: usize = 3;
 /// With more cautions than this the advice on them is left to the page, for the same reason.
 const MOST_ADVISED: usize = 2;
 
@@ -53,6 +53,7 @@ pub fn summary(firing: &Firing, view: View, files: Option<(&Path, &[&str])>) -> 
     let mut lines = Vec::new();
     heading(firing, view, &mut lines);
     figures(firing, view, &mut lines);
+    improvement(firing, view, &mut lines);
     checks(firing, view, &mut lines);
     if let Some((folder, names)) = files {
         lines.push(String::new());
@@ -148,6 +149,24 @@ fn figures(firing: &Firing, view: View, lines: &mut Vec<String>) {
     }
 }
 
+/// What would narrow the interval of the total impulse most; of the burn time where the impulse has none.
+fn improvement(firing: &Firing, view: View, lines: &mut Vec<String>) {
+    let best = named(&firing.quantities)
+        .into_iter()
+        .filter(|entry| matches!(entry.key, "total_impulse" | "burn_time"))
+        .find_map(|entry| {
+            let first = firing.uncertainty_budget.get(entry.key)?.first()?.improvement.as_ref()?;
+            entry.figure.map(|figure| (figure, first))
+        });
+    if let Some((figure, improvement)) = best {
+        let half = improvement.half_width_95_if_halved;
+        let halved = Figure { interval_95: Some([figure.value - half, figure.value + half]), ..figure.clone() };
+        let halved = words(&halved, view.units);
+        let text = format!("{}; half that error: ± {} {}", plain(&improvement.remedy), halved.half_width, halved.unit);
+        lines.extend(wrapped(&text, "  to improve first: ", "  "));
+    }
+}
+
 fn checks(firing: &Firing, view: View, lines: &mut Vec<String>) {
     let count = |status: Status| firing.checks.iter().filter(|check| check.status == status).count();
     let (passed, cautions, failed) = (count(Status::Pass), count(Status::Caution), count(Status::Fail));
@@ -232,6 +251,7 @@ mod tests {
         assert!(order.windows(2).all(|pair| place(pair[0]) < place(pair[1])), "{text}");
         assert!(!text.contains("sampling"), "checks that passed are only counted");
         assert!(text.contains("95 %"));
+        assert!(text.contains("to improve first: use better weights; half that error: ± 2.3 N·s"), "{text}");
         if let Ok(folder) = std::env::var("BURNTALLY_TEST_PICTURES") {
             std::fs::write(Path::new(&folder).join("summary.txt"), &text).unwrap();
         }

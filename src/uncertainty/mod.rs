@@ -2,5 +2,7 @@
 
 pub mod distribution;
 pub mod effects;
+pub mod improvement;
 pub mod monte_carlo;
+pub mod propagation;
 pub mod statistics;
