@@ -388,7 +388,7 @@ fn fit_until(
     let settled: Vec<f64> =
         times.iter().zip(&values).filter(|(t, _)| **t > half_s + period_s).map(|(_, v)| *v).collect();
     let level = settled.iter().sum::<f64>() / settled.len().max(1) as f64;
-    if !(level > 10.0 * noise_n) {
+    if level.is_nan() || level <= 10.0 * noise_n {
         return None;
     }
     let mut readings = Readings {
@@ -432,7 +432,7 @@ fn fit_until(
     let courses: Vec<(f64, Course)> =
         fits.iter().filter_map(|f| course(&readings, f, &grid).map(|c| (weight(f), c))).collect();
     let total: f64 = courses.iter().map(|(w, _)| w).sum();
-    if !(total > 0.0) {
+    if total.is_nan() || total <= 0.0 {
         return None;
     }
     let mean = |of: &dyn Fn(&Course) -> f64| courses.iter().map(|(w, c)| w * of(c)).sum::<f64>() / total;
