@@ -94,6 +94,11 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
     let mut findings = inputs.log.findings.clone();
     findings.extend(record.findings.iter().cloned());
     findings.append(&mut figures.findings);
+    if let Some(count) = stand.as_ref().map(|s| s.impossible).filter(|n| *n > 0) {
+        findings.push(format!(
+            "{count} readings that no mass on a spring can give are bridged in the curve; the impulse still counts them"
+        ));
+    }
     let firing = Firing {
         schema: SCHEMA.to_string(),
         run: RunRecord {
@@ -107,7 +112,7 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
         burn: figures.times,
         bursts,
         motor_class: figures.class,
-        stand: stand.map(|s| StandRecord {
+        stand: stand.as_ref().map(|s| StandRecord {
             natural_frequency_hz: s.frequency_hz,
             damping_ratio: Some(s.damping_ratio),
             source: s.source.to_string(),

@@ -255,20 +255,31 @@ fn half_a_second_before_and_a_cut_tail_leave_the_impulse_standing() {
     kind_holds(Kind::Truncated, 20, &rows(each(0.005), each(0.005), None));
 }
 
-/// The swing makes the naive peak 8 to 90 % high. Wanted is 0.5 % each. A spike whose corner comes within the rise of a few milliseconds
-/// is known to 0.3 to 0.5 % (standard uncertainty) only where noise is 0.3 % of peak, since undoing the stand takes the noise up twenty
-/// times: one in ten goes beyond 0.5 % (DEVELOPERS.md, known limits), and none here beyond 1 %.
+/// The swing makes the naive peak 8 to 90 % high.
 #[test]
 fn a_ringing_stand_is_seen_through() {
-    kind_holds(Kind::Ringing, 20, &rows(each(0.0015), both(0.01, 0.001), Some(each(0.003))));
-    let beyond = run_kind(Kind::Ringing, 20)
-        .iter()
-        .filter(|case| {
-            let peak = case.reduction.as_ref().ok().and_then(|r| value(&r.firing.quantities.peak_thrust));
-            peak.is_none_or(|p| (p / case.truth.peak_thrust_n - 1.0).abs() > 0.005)
-        })
-        .count();
-    assert!(beyond <= 3, "{beyond} of 20 peaks off by more than 0.5 %");
+    kind_holds(Kind::Ringing, 20, &rows(each(0.0015), each(0.005), Some(each(0.003))));
+}
+
+/// Firings that gave trouble once: spikes right after the rise, a glitch within the ring after burn-out, stamps off by some per cent.
+#[test]
+fn ringing_firings_that_gave_trouble() {
+    let seeds = [3001, 4002, 4010, 4016, 4017, 7008, 14_011, 14_017, 20_036, 20_058];
+    let cases: Vec<Case> = seeds.into_par_iter().map(|seed| run(random_scenario_kind(Kind::Ringing, seed))).collect();
+    let cases: Vec<&Case> = cases.iter().collect();
+    all_hold(&judge("once troublesome", &cases, &rows(each(0.0015), each(0.005), Some(each(0.003)))));
+}
+
+/// Undoing a swing that was not there is worse than leaving one.
+#[test]
+fn nothing_is_taken_out_of_a_stiff_stand() {
+    for kind in [Kind::Plain, Kind::Averaging10Hz, Kind::Noisy, Kind::Truncated, Kind::Averaging80Hz] {
+        for case in run_kind(kind, 20) {
+            let Ok(reduction) = &case.reduction else { continue };
+            let filter = &reduction.firing.conditioning.filter;
+            assert!(!filter.contains("response of the stand"), "{}: {filter}", case.scenario.id);
+        }
+    }
 }
 
 /// Largest relative errors of total impulse, peak thrust and burn time for the sample runs, by what each run allows.

@@ -84,8 +84,9 @@ pub fn read_log(file: &Path, request: &ReadRequest) -> Result<Log, Problem> {
 pub struct InspectFindings {
     /// Column and standard deviation of its longest quiet stretch.
     pub noise: Vec<(String, f64)>,
-    /// Where a burst rings.
+    /// Where a burst rings, and how fast that dies away.
     pub resonance_hz: Option<f64>,
+    pub resonance_damping_ratio: Option<f64>,
     /// Column, start and end in s of log time, and largest departure from the quiet level.
     pub bursts: Vec<(String, f64, f64, f64)>,
 }
@@ -136,8 +137,9 @@ pub fn findings(log: &Log) -> InspectFindings {
                 let noise = found.noise.last().map_or(0.0, |(_, sd)| *sd);
                 let risen = y.iter().position(|v| (v - event.level_before) / event.peak > 0.5).unwrap_or(0);
                 let limit_s = t[risen] + 0.6 * (end_s - start_s);
-                found.resonance_hz = ringing::after(t, y, noise, t[risen], limit_s, LEAST_RING * event.peak.abs())
-                    .map(|ring| ring.frequency_hz);
+                let ring = ringing::after(t, y, noise, t[risen], limit_s, LEAST_RING * event.peak.abs());
+                found.resonance_hz = ring.map(|ring| ring.frequency_hz);
+                found.resonance_damping_ratio = ring.map(|ring| ring.damping_ratio);
             }
         }
     }

@@ -96,7 +96,9 @@ fn describe(name: &str, log: &Log, found: &InspectFindings) -> String {
     });
     section(&mut lines, "repairs and drops", repairs.collect());
     if let Some(hz) = found.resonance_hz {
-        section(&mut lines, "resonance", vec![format!("the stand rings at about {} Hz", significant(hz, 3))]);
+        let damping = found.resonance_damping_ratio.map(|z| format!(", damping ratio about {}", significant(z, 2)));
+        let ring = format!("the stand rings at about {} Hz{}", significant(hz, 3), damping.unwrap_or_default());
+        section(&mut lines, "resonance", vec![ring]);
     }
     let bursts = found.bursts.iter().map(|(column, start_s, end_s, peak)| {
         format!("{}: {} to {} s, peak {}", plain(column), fixed(*start_s, 2), fixed(*end_s, 2), significant(*peak, 4))
@@ -141,7 +143,8 @@ fn as_json(name: &str, log: &Log, found: &InspectFindings) -> serde_json::Value 
         "file": name, "bytes": log.bytes, "sha256": log.sha256, "records": log.records, "duration_s": duration_s(log),
         "interval_s": log.interval_s, "rate_hz": rate_hz(log), "clock_resolution_s": log.clock_resolution_s,
         "available": log.available, "columns": columns, "gaps": log.gaps, "repairs": log.repairs,
-        "findings": log.findings, "resonance_hz": found.resonance_hz, "bursts": bursts,
+        "findings": log.findings, "resonance_hz": found.resonance_hz,
+        "resonance_damping_ratio": found.resonance_damping_ratio, "bursts": bursts,
     })
 }
 
@@ -155,6 +158,7 @@ mod tests {
         let found = InspectFindings {
             noise: vec![("load".to_owned(), 12.3)],
             resonance_hz: Some(38.2),
+            resonance_damping_ratio: None,
             bursts: vec![("load".to_owned(), 128.3, 135.9, 41_234.0)],
         };
         let text = describe("a.csv", &log(), &found);

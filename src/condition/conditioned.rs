@@ -2,6 +2,7 @@
 //! long as the data allow; and the peak of that curve with the bias that noise and smoothing give it taken out.
 
 use crate::condition::adaptive::{self, Smoothed};
+use crate::condition::ignition::Ignition;
 use crate::condition::median::median;
 use crate::condition::response::{self, Response};
 use crate::condition::scatter::Scatter;
@@ -31,6 +32,21 @@ pub struct Conditioned {
     sample_noise_n: Vec<f64>,
     /// Noise of single samples in the quiet record, before any filter, N.
     quiet_noise_n: f64,
+    noise_gain: f64,
+    /// Where the compensation of the stand's response ends, Hz.
+    pub band_end_hz: Option<f64>,
+    /// The ignition by models driven through the stand; the curve follows it there.
+    pub ignition: Option<Ignition>,
+}
+
+/// The stand to be seen through.
+#[derive(Debug, Clone, Copy)]
+pub struct Through<'a> {
+    /// As it is at ignition.
+    pub response: Response,
+    /// Mass on the spring over that at ignition, one a sample; empty where it stays.
+    pub inertia: &'a [f64],
+    pub ignition: Option<&'a Ignition>,
 }
 
 /// The signal must stand this far out of the noise floor (in power) to count.
@@ -48,6 +64,8 @@ const CHOICE_OF_STRETCH: f64 = std::f64::consts::SQRT_2;
 /// errors of their difference.
 const LARGEST_CORNER_ERROR: f64 = 0.03;
 const CORNER_EVIDENCE: f64 = 2.5;
+/// A fitted ignition is nearly as sure as the readings up to this factor of their uncertainty.
+const NEARLY_AS_SURE: f64 = 2.0;
 /// Parts of the burst whose tops are looked at, where they reach this share of the highest.
 const PARTS: usize = 16;
 const NEARLY_HIGHEST: f64 = 0.97;
@@ -131,7 +149,7 @@ pub fn condition(
     quiet_sd_n: f64,
     burst_s: f64,
     wanted: Option<Lowpass>,
-    stand: Option<Response>,
+    stand: Option<Through<'_>>,
 ) -> Conditioned {
     let uneven = time_s.windows(2).any(|w| ((w[1] - w[0]) / interval_s - 1.0).abs() > 0.02);
     let (grid_s, mut value) =
@@ -143,15 +161,25 @@ pub fn condition(
     let typical = median(noise_n.clone());
     let mut autocorrelation = vec![1.0];
     let mut quiet_noise_n = quiet_sd_n;
-    if let Some(response) = stand {
+    let (mut band_end_hz, mut noise_gain) = (None, 1.0);
+    if let Some(Through { response, inertia, .. }) = stand {
         let highest = value.iter().copied().fold(f64::MIN_POSITIVE, f64::max);
         let kernel = response::kernel(response, interval_s, typical / highest);
-        value = response::apply(&kernel, &value);
+        band_end_hz = Some(response::band_end_hz(response, interval_s, typical / highest));
+        if inertia.len() == time_s.len() {
+            let inertia = if uneven { even_grid(time_s, inertia, interval_s).1 } else { inertia.to_vec() };
+            let (steady, inertial) = response::kernels(response, interval_s, typical / highest);
+            let (steady, inertial) = (response::apply(&steady, &value), response::apply(&inertial, &value));
+            value = steady.iter().zip(&inertial).zip(&inertia).map(|((a, b), m)| a + m * b).collect();
+        } else {
+            value = response::apply(&kernel, &value);
+        }
         let product = |lag: usize| -> f64 { kernel.iter().zip(&kernel[lag..]).map(|(a, b)| a * b).sum() };
         let power = product(0);
         autocorrelation = (0..kernel.len()).map(|lag| product(lag) / power).collect();
         // Roughness that the second differences showed is the stand's swing in part; the quiet noise is what is amplified.
-        quiet_noise_n = quiet_sd_n * power.sqrt();
+        noise_gain = power.sqrt();
+        quiet_noise_n = quiet_sd_n * noise_gain;
         noise_n = vec![quiet_noise_n; n];
     }
     let cutoff_hz = match wanted {
@@ -183,11 +211,16 @@ pub fn condition(
         samples_n,
         sample_noise_n,
         quiet_noise_n,
+        noise_gain,
+        band_end_hz,
+        // A person's low-pass is exactly what is applied.
+        ignition: stand.and_then(|s| s.ignition).filter(|_| wanted.is_none()).cloned(),
     };
     if wanted.is_none() {
         let Smoothed { value, standard_error } = conditioned.smooth(&value, 0..n);
         conditioned.thrust_n = value;
         conditioned.standard_error_n = standard_error;
+        conditioned.follow_ignition();
     } else {
         conditioned.thrust_n = value;
     }
@@ -207,13 +240,54 @@ pub struct Peak {
 }
 
 impl Conditioned {
+    /// By how much the compensation of the stand's response takes up the noise of a reading; 1 without it.
+    pub fn noise_gain(&self) -> f64 {
+        self.noise_gain
+    }
+
     fn smooth(&self, value: &[f64], range: std::ops::Range<usize>) -> Smoothed {
         adaptive::smooth(value, &self.noise_n[range], &self.autocorrelation, self.longest)
+    }
+
+    /// Puts the ignition in the place of the smoothed readings up to where it hands over, and fades from there to its end.
+    fn follow_ignition(&mut self) {
+        let Some(ignition) = &self.ignition else { return };
+        let (Some(&first), Some(&last)) = (ignition.time_s.first(), ignition.time_s.last()) else { return };
+        for (i, t) in self.time_s.iter().enumerate() {
+            if *t < first || *t >= last {
+                continue;
+            }
+            let (value, error) = ignition.at(*t);
+            let share = ((last - t) / (last - ignition.hand_over_s)).clamp(0.0, 1.0);
+            self.thrust_n[i] += share * (value - self.thrust_n[i]);
+            self.standard_error_n[i] += share * (error - self.standard_error_n[i]);
+        }
     }
 
     /// Peak between the grid indices of `range`. `averaged`: the samples are means over their intervals, which a corner between them
     /// cannot be told from.
     pub fn peak(&self, range: std::ops::Range<usize>, averaged: bool) -> Option<Peak> {
+        let read = self.peak_of_readings(range, averaged)?;
+        let Some(ignition) = &self.ignition else { return Some(read) };
+        let (Some(&first), Some(&last)) = (ignition.time_s.first(), ignition.time_s.last()) else { return Some(read) };
+        let fitted = Peak { time_s: ignition.peak_s, thrust_n: ignition.peak_n, noise_u_n: ignition.peak_u_n, ..read };
+        // One top, told twice: the one that is known better counts. Two tops: the higher, where it plainly is.
+        let one = (first..=last).contains(&read.time_s);
+        let better = if one {
+            // Readings with the stand taken out round a sharp top off, so that a higher one counts where it is nearly as sure.
+            fitted.noise_u_n < read.noise_u_n
+                || fitted.noise_u_n < NEARLY_AS_SURE * read.noise_u_n
+                    && fitted.thrust_n - read.thrust_n > read.noise_u_n
+        } else {
+            fitted.thrust_n - read.thrust_n > fitted.noise_u_n.hypot(read.noise_u_n)
+        };
+        // Where the two ways do not agree, neither is as sure as it seems.
+        let open = if one { 0.5 * (fitted.thrust_n - read.thrust_n).abs() } else { 0.0 };
+        let chosen = if better { fitted } else { read };
+        Some(Peak { noise_u_n: chosen.noise_u_n.hypot(open.min(ignition.peak_u_n.max(read.noise_u_n))), ..chosen })
+    }
+
+    fn peak_of_readings(&self, range: std::ops::Range<usize>, averaged: bool) -> Option<Peak> {
         let piece = self.thrust_n.get(range.clone())?;
         let (at, highest_n) = piece.iter().copied().enumerate().max_by(|a, b| a.1.total_cmp(&b.1))?;
         let at = range.start + at;

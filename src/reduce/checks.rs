@@ -309,11 +309,15 @@ fn ringing(c: &mut Checks, record: &Record<'_>, stand: Option<&Stand>) {
             "ringing",
             Status::Caution,
             format!(
-                "the stand rings at {:.2} Hz, damping ratio {:.3} ({}){}: its response is taken out of the curve; peak, rise and crossings rest on that",
+                "the stand rings at {:.2} Hz{}, damping ratio {:.3} ({}){}: its response is taken out of the curve; peak, rise and crossings rest on that{}",
                 s.frequency_hz,
+                s.frequency_after_hz.map_or(String::new(), |hz| format!(" at ignition and {hz:.2} Hz after burn-out")),
                 s.damping_ratio,
                 s.source,
-                s.share_of_peak.map_or(String::new(), |a| format!(", swinging by {} of peak", percent(a)))
+                s.share_of_peak.map_or(String::new(), |a| format!(", swinging by {} of peak", percent(a))),
+                s.contradicts.map_or(String::new(), |n| format!(
+                    ". The record contradicts the frequency told in run.toml by {n:.0} standard uncertainties"
+                ))
             ),
         ),
     }

@@ -3,8 +3,7 @@
 use super::{Record, figures::Figures, stand::Stand, zero, zero::Zero};
 use crate::burn::tail::{self, Tail};
 use crate::condition::averaging::{self, Edge};
-use crate::condition::conditioned::{self, Conditioned, Peak};
-use crate::condition::response::Response;
+use crate::condition::conditioned::{self, Conditioned, Peak, Through};
 use crate::firing::Curves;
 use crate::measure::integral;
 use crate::problem::Problem;
@@ -18,6 +17,10 @@ pub struct Curve {
     pub peak: Peak,
     pub quiet_sd_n: f64,
     pub tail: Option<Tail>,
+    /// Relative standard uncertainty of the stand's frequency, and that of its damping ratio, where its response is taken out.
+    pub stand_u: Option<[f64; 2]>,
+    /// Whether the curve was reconstructed inside averaged cells.
+    pub reconstructed: bool,
     /// Reconstructed rise and fall of an averaging converter.
     pub rise: Option<Edge>,
     pub fall: Option<Edge>,
@@ -34,21 +37,31 @@ impl Curve {
         }
         if let Some(stand) = stand.filter(|s| s.taken_out) {
             words.push(format!(
-                "response of the stand taken out ({:.2} Hz, damping ratio {:.3}, {})",
-                stand.frequency_hz, stand.damping_ratio, stand.source
+                "response of the stand taken out ({:.2} Hz{}, damping ratio {:.3}, {})",
+                stand.frequency_hz,
+                stand.frequency_after_hz.map_or(String::new(), |hz| format!(" at ignition, {hz:.2} Hz after burn-out")),
+                stand.damping_ratio,
+                stand.source
             ));
         }
         match self.conditioned.cutoff_hz {
             Some(hz) => words.push(format!("zero-phase Butterworth low-pass, second order run both ways, {hz:.3} Hz")),
-            None if stand.is_some_and(|s| s.taken_out) => {
-                words.push("the band ends where the compensation's smoothing ends it".to_string())
+            None if self.conditioned.band_end_hz.is_some() => {
+                let hz = self.conditioned.band_end_hz.unwrap_or(0.0);
+                let gain = self.conditioned.noise_gain();
+                words.push(format!(
+                    "the band of the compensation ends at {hz:.0} Hz (half amplitude), where it takes the noise of a reading up {gain:.1} times before smoothing"
+                ));
             }
             None => words.push("no low-pass: signal reaches up to the end of the band".to_string()),
+        }
+        if self.conditioned.ignition.is_some() {
+            words.push("ignition fitted by driving models of the rise through the stand".to_string());
         }
         if self.conditioned.smoothed {
             words.push("local straight lines over windows as long as they agree within the noise".to_string());
         }
-        if self.time_s.len() > self.conditioned.time_s.len() {
+        if self.reconstructed {
             words.push("curve inside the averaging cells reconstructed so that each keeps its mean".to_string());
         }
         words.join("; ")
@@ -62,16 +75,19 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
     let time_s = &record.time_s[zero.window.clone()];
     let quiet_sd_n = zero::sample_noise(zero);
     let burst_s = [record.time_s[record.burn.start], record.time_s[zero.burst.end - 1]];
+    let readings = stand.map(|s| &s.readings_n).filter(|r| r.len() == time_s.len()).unwrap_or(&zero.thrust_n);
     let mut conditioned = conditioned::condition(
         time_s,
-        &zero.thrust_n,
+        readings,
         record.interval_s(),
         quiet_sd_n,
         record.time_s[record.burn.end - 1] - record.time_s[record.burn.start],
         record.inputs.run.reduction.lowpass,
-        stand
-            .filter(|s| s.taken_out)
-            .map(|s| Response { frequency_hz: s.frequency_hz, damping_ratio: s.damping_ratio }),
+        stand.filter(|s| s.taken_out).map(|s| Through {
+            response: s.response(),
+            inertia: &s.inertia,
+            ignition: s.ignition.as_ref(),
+        }),
     );
     let first = conditioned.time_s.partition_point(|t| *t < burst_s[0]);
     let last = conditioned.time_s.partition_point(|t| *t <= burst_s[1]);
@@ -86,18 +102,30 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
     conditioned.settle_peak(&peak);
     let (mut curve_s, mut curve_n) = (conditioned.time_s.clone(), conditioned.thrust_n.clone());
     let (mut rise, mut fall) = (None, None);
+    let mut reconstructed = false;
     if record.averaged_cells() && conditioned.time_s.len() <= MOST_CELLS {
         let r = averaging::reconstruct(&conditioned.thrust_n, quiet_sd_n);
         let origin = conditioned.time_s[0] - 0.5 * conditioned.interval_s;
         curve_s = r.position.iter().map(|p| origin + p * conditioned.interval_s).collect();
         curve_n = r.value;
         (rise, fall) = (r.rise, r.fall);
+        reconstructed = true;
         if let Some((i, top)) = curve_n.iter().copied().enumerate().max_by(|a, b| a.1.total_cmp(&b.1))
             && top > peak.thrust_n
         {
             peak.noise_u_n = peak.noise_u_n.hypot(0.5 * (top - peak.thrust_n));
             peak.thrust_n = top;
             peak.time_s = curve_s[i];
+        }
+    } else if let Some(ignition) = &conditioned.ignition {
+        // The rise is told between the samples too.
+        let first = ignition.time_s.first().copied().unwrap_or(f64::INFINITY);
+        let (from, to) =
+            (curve_s.partition_point(|t| *t < first), curve_s.partition_point(|t| *t <= ignition.hand_over_s));
+        let inner = ignition.time_s.partition_point(|t| *t <= ignition.hand_over_s);
+        if from < to {
+            curve_s.splice(from..to, ignition.time_s[..inner].iter().copied());
+            curve_n.splice(from..to, ignition.thrust_n[..inner].iter().map(|f| f.min(peak.thrust_n)));
         }
     }
     let tail = record.burn.cut_at_end.then(|| {
@@ -112,6 +140,8 @@ pub fn condition(record: &Record<'_>, zero: &Zero, stand: Option<&Stand>) -> Res
         peak,
         quiet_sd_n,
         tail: tail.flatten(),
+        reconstructed,
+        stand_u: stand.filter(|s| s.taken_out).map(|s| [s.frequency_u_hz / s.frequency_hz, s.damping_u]),
         rise,
         fall,
         burst_s,

@@ -14,6 +14,9 @@ use crate::uncertainty::effects::{Acts, Effect};
 use crate::uncertainty::propagation;
 use nalgebra::DMatrix;
 
+/// Half the stretch over which the swing of the stand is judged, s.
+const SWING_S: f64 = 0.015;
+
 /// What the effects are computed from.
 pub(super) struct Work<'a> {
     pub record: &'a Record<'a>,
@@ -40,6 +43,7 @@ impl Work<'_> {
         effects.extend(self.zero());
         effects.extend(self.noise());
         effects.extend(self.ends(delay_u));
+        effects.extend(self.stand_response());
         effects.push(self.clock());
         if let Some(Some(u)) = mass_u
             && self.record.inputs.run.motor.propellant_mass_kg.is_some()
@@ -376,6 +380,32 @@ impl Work<'_> {
         let thrust = |time_s: f64| curve::at(&self.curve.time_s, &self.curve.thrust_n, time_s);
         let start_s = self.burn.start.time_s;
         (thrust(start_s + self.initial_s) - thrust(start_s)) / self.initial_s
+    }
+
+    /// What an error of the stand's frequency or damping does: T = x + 2 (ζ/ω) x′ + x″/ω² moves by −2 (δω/ω) (T − x) and by
+    /// 2 δζ x′/ω, both of the size of the swing T − x there. The impulse does not feel it.
+    fn stand_response(&self) -> Vec<Effect> {
+        let Some([frequency_u, damping_u]) = self.curve.stand_u else { return Vec::new() };
+        // The phase of the swing turns within the smoothing: its effective value.
+        let swing = |time_s: f64| {
+            let from = self.bt.partition_point(|t| *t < time_s - SWING_S);
+            let to = self.bt.partition_point(|t| *t <= time_s + SWING_S);
+            let off = (from..to)
+                .map(|i| (self.bf[i] - curve::at(&self.curve.time_s, &self.curve.thrust_n, self.bt[i])).powi(2));
+            (off.sum::<f64>() / (to - from).max(1) as f64).sqrt()
+        };
+        let moved = |c: &Crossing| if c.slope > 0.0 && c.slope.is_finite() { swing(c.time_s) / c.slope } else { 0.0 };
+        // Where the ignition was fitted, its own uncertainty holds the stand's already.
+        let fitted = self.curve.conditioned.ignition.as_ref().is_some_and(|i| i.peak_s == self.curve.peak.time_s);
+        [2.0 * frequency_u, 2.0 * damping_u]
+            .into_iter()
+            .map(|u| Effect {
+                peak_thrust: if fitted { 0.0 } else { u * swing(self.curve.peak.time_s) },
+                burn_time: u * moved(&self.burn.start).hypot(moved(&self.burn.end)),
+                action_time: u * moved(&self.action.start).hypot(moved(&self.action.end)),
+                ..Effect::of("stand's response")
+            })
+            .collect()
     }
 
     /// Half the time that the curve takes through `level_n` ± `error_n`: in noise it climbs down in steps, and the slope of one step

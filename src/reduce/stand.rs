@@ -1,13 +1,15 @@
 //! The stand's oscillation: told in run.toml, or found after ignition, after burn-out or in a knock.
 
-use super::{Record, bursts, zero::Zero};
+use super::{Record, bursts, figures, zero::Zero};
+use crate::condition::ignition::{self, Ignition, Known};
 use crate::condition::response::{self, Response};
 use crate::condition::ringing::{self, Ring};
 use crate::firing::BurstKind;
 
 /// What is known of the stand.
-#[derive(Debug, Clone, Copy, PartialEq)]
+#[derive(Debug, Clone, PartialEq)]
 pub struct Stand {
+    /// At ignition.
     pub frequency_hz: f64,
     pub frequency_u_hz: f64,
     pub damping_ratio: f64,
@@ -17,6 +19,32 @@ pub struct Stand {
     pub share_of_peak: Option<f64>,
     /// Whether the response is taken out of the curve.
     pub taken_out: bool,
+    /// After burn-out, where a ring there shows that the mass on the spring has become less: frequency, Hz.
+    pub frequency_after_hz: Option<f64>,
+    /// Mass on the spring over that at ignition, at the samples of the zero's window; empty where it stays.
+    pub inertia: Vec<f64>,
+    /// The ignition by models driven through the stand.
+    pub ignition: Option<Ignition>,
+    /// Thrust as read, without the readings that no mass on a spring can give, and how many these were; empty where nothing is taken out.
+    pub readings_n: Vec<f64>,
+    pub impossible: usize,
+    /// By how many standard uncertainties the record contradicts what run.toml tells of the frequency.
+    pub contradicts: Option<f64>,
+}
+
+impl Stand {
+    pub fn response(&self) -> Response {
+        Response { frequency_hz: self.frequency_hz, damping_ratio: self.damping_ratio }
+    }
+
+    fn known(&self) -> Known {
+        Known {
+            frequency_hz: self.frequency_hz,
+            frequency_u_hz: self.frequency_u_hz,
+            damping_ratio: self.damping_ratio,
+            damping_u: self.damping_u,
+        }
+    }
 }
 
 /// Cycles over which the curve must be calmer without the oscillation, the share of a cycle averaged before its ups and downs
@@ -31,7 +59,93 @@ const LOWER: f64 = 0.3;
 /// Oscillations smaller than this share of peak change no figure.
 const LEAST_SHARE: f64 = 0.004;
 
+/// The ignition is fitted up to this share of the burst.
+const FITTED_SHARE: f64 = 0.6;
+/// A ring tells the stand no better than to this share of its damping and frequency: what the motor does meanwhile is in it too.
+const DAMPING_FLOOR: f64 = 0.1;
+const FREQUENCY_FLOOR: f64 = 0.002;
+/// From so many standard uncertainties on the record contradicts what it was told.
+const CONTRADICTION: f64 = 3.0;
+/// A ring after burn-out counts from so many times the noise of a sample on.
+const LEAST_AFTER: f64 = 6.0;
+/// The frequency has risen where the ring after burn-out says so by so many standard uncertainties, and by no more than this factor.
+const RISEN_EVIDENCE: f64 = 4.0;
+const MOST_RISEN: f64 = 1.6;
+
+/// What is known of the stand from run.toml or the record.
 pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
+    let mut stand = identify(record, zero)?;
+    if !stand.taken_out {
+        return Some(stand);
+    }
+    let t = &record.time_s[zero.window.clone()];
+    let mut readings = zero.thrust_n.clone();
+    let impossible = response::impossible(t, &readings, stand.frequency_hz, super::zero::sample_noise(zero));
+    for (i, value) in &impossible {
+        readings[*i] = *value;
+    }
+    stand.impossible = impossible.len();
+    if !figures::clipped_in_burn(record).is_empty() {
+        stand.readings_n = readings;
+        return Some(stand);
+    }
+    let f = &readings;
+    let inside = zero.burst.start - zero.window.start..zero.burst.end - zero.window.start;
+    let highest = f[inside.clone()].iter().copied().fold(0.0, f64::max);
+    let half = f[inside.clone()].iter().position(|v| *v > 0.5 * highest)? + inside.start;
+    let noise = super::zero::sample_noise(zero);
+    let end_s = t[inside.end - 1];
+    lighten(&mut stand, t, f, inside.clone(), noise, (LEAST_SHARE * highest).max(LEAST_AFTER * noise));
+    let mut known = stand.known();
+    known.frequency_u_hz = known.frequency_u_hz.max(FREQUENCY_FLOOR * known.frequency_hz);
+    known.damping_u = known.damping_u.max(DAMPING_FLOOR * known.damping_ratio);
+    let limit_s = t[half] + FITTED_SHARE * (end_s - t[inside.start]);
+    let inertia = |time_s: f64| -> f64 {
+        let i = t.partition_point(|x| *x < time_s);
+        stand.inertia.get(i.min(t.len() - 1)).copied().unwrap_or(1.0)
+    };
+    if !record.averaged_cells() {
+        stand.ignition = ignition::fit(t, f, noise, [t[half], limit_s], known, inertia);
+    }
+    if let Some(ignition) = &stand.ignition {
+        let seen = ignition.stand;
+        let off = (seen.frequency_hz - stand.frequency_hz).abs() / stand.frequency_u_hz.hypot(seen.frequency_u_hz);
+        stand.contradicts = (stand.source == "run.toml" && off > CONTRADICTION).then_some(off);
+        (stand.frequency_hz, stand.frequency_u_hz) = (seen.frequency_hz, seen.frequency_u_hz);
+        (stand.damping_ratio, stand.damping_u) = (seen.damping_ratio, seen.damping_u);
+    }
+    stand.readings_n = readings;
+    Some(stand)
+}
+
+/// Looks for the ring after burn-out; where it is faster, the mass on the spring has fallen with the propellant that is gone.
+fn lighten(stand: &mut Stand, t: &[f64], f: &[f64], inside: std::ops::Range<usize>, noise: f64, least: f64) {
+    let end_s = t[inside.end - 1];
+    let highest = f[inside.clone()].iter().copied().fold(0.0, f64::max);
+    let low = f[..inside.end].iter().rposition(|v| *v > 0.1 * highest).unwrap_or(inside.end - 1);
+    let last_s = t[t.len() - 1];
+    let rings = [t[low], end_s].map(|from| ringing::after(t, f, noise, from, last_s, least));
+    let Some(ring) = rings.into_iter().flatten().min_by(|a, b| a.frequency_u_hz.total_cmp(&b.frequency_u_hz)) else {
+        return;
+    };
+    let factor = ring.frequency_hz / stand.frequency_hz;
+    let u = ring.frequency_u_hz.hypot(stand.frequency_u_hz);
+    if factor > MOST_RISEN || ring.frequency_hz - stand.frequency_hz < RISEN_EVIDENCE * u {
+        return;
+    }
+    stand.frequency_after_hz = Some(ring.frequency_hz);
+    // 1/ω² goes with the mass, and the mass with the impulse delivered.
+    let gone = 1.0 - 1.0 / (factor * factor);
+    let mut delivered = vec![0.0; t.len()];
+    for i in inside.start.max(1)..t.len() {
+        let step = if i < inside.end { 0.5 * (f[i] + f[i - 1]).max(0.0) * (t[i] - t[i - 1]) } else { 0.0 };
+        delivered[i] = delivered[i - 1] + step;
+    }
+    let whole = delivered[t.len() - 1].max(f64::MIN_POSITIVE);
+    stand.inertia = delivered.iter().map(|d| 1.0 - gone * d / whole).collect();
+}
+
+fn identify(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     let told = &record.inputs.run.stand;
     if let Some(frequency) = told.natural_frequency_hz {
         // A frequency without a damping ratio: what bolted steel stands show, 1 to 5 % (from memory).
@@ -44,6 +158,12 @@ pub fn find(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
             source: "run.toml",
             share_of_peak: None,
             taken_out: true,
+            frequency_after_hz: None,
+            inertia: Vec::new(),
+            ignition: None,
+            readings_n: Vec::new(),
+            impossible: 0,
+            contradicts: None,
         });
     }
     let t = &record.time_s[zero.window.clone()];
@@ -117,5 +237,11 @@ fn of(ring: Ring, source: &'static str, share_of_peak: Option<f64>, taken_out: b
         source,
         share_of_peak,
         taken_out,
+        frequency_after_hz: None,
+        inertia: Vec::new(),
+        ignition: None,
+        readings_n: Vec::new(),
+        impossible: 0,
+        contradicts: None,
     }
 }

@@ -26,6 +26,8 @@ pub enum Kind {
     Ringing,
     /// 80 Hz converter averaging over 12.5 ms.
     Averaging80Hz,
+    /// The same stand, with a motor whose propellant is 10 to 40 % of what swings: the frequency rises as it burns.
+    RingingLighter,
 }
 
 pub const KINDS: [Kind; 6] =
@@ -38,12 +40,15 @@ pub fn random_scenario(seed: u64) -> Scenario {
 /// Draws one firing of a kind; the same seed gives the same firing.
 pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
     let mut rng = ChaCha8Rng::seed_from_u64(seed.wrapping_mul(0x9e37_79b9_7f4a_7c15) ^ kind as u64);
+    // All else as on a stand whose mass stays.
+    let (lighter, kind) =
+        (kind == Kind::RingingLighter, if kind == Kind::RingingLighter { Kind::Ringing } else { kind });
     let mut draw = Draw { rng: &mut rng };
     let rate_hz = match kind {
         Kind::Plain => draw.one_of(&[80.0, 100.0, 200.0, 300.0, 500.0, 1000.0, 1000.0, 2000.0, 5000.0, 10_000.0]),
         Kind::Averaging10Hz => 10.0,
         Kind::Averaging80Hz => 80.0,
-        Kind::Noisy | Kind::Ringing | Kind::Truncated => 1000.0,
+        Kind::Noisy | Kind::Ringing | Kind::RingingLighter | Kind::Truncated => 1000.0,
     };
     let averaging_s = match kind {
         Kind::Averaging10Hz | Kind::Averaging80Hz => 1.0 / rate_hz,
@@ -63,7 +68,7 @@ pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
     match kind {
         Kind::Noisy => noise = 0.04,
         Kind::Averaging10Hz => noise = draw.log_range(2e-4, 1e-3),
-        Kind::Averaging80Hz | Kind::Ringing => noise = noise.min(3e-3),
+        Kind::Averaging80Hz | Kind::Ringing | Kind::RingingLighter => noise = noise.min(3e-3),
         Kind::Truncated => noise = noise.min(5e-3),
         Kind::Plain => {}
     }
@@ -115,7 +120,10 @@ pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
     }
     if kind == Kind::Ringing {
         stand.resonance = Some((34.0, 0.02));
-        stand.resonance_told = draw.chance(0.5);
+        stand.resonance_told = draw.chance(0.5) && !lighter;
+        if lighter {
+            stand.lightening = draw.range(0.1, 0.4);
+        }
     }
     if kind == Kind::Plain && after_s > 3.5 && draw.chance(0.25) {
         stand.hits = draw.hits(peak_n, after_s, average_n * motor.body_s);
@@ -152,7 +160,7 @@ pub fn random_scenario_kind(kind: Kind, seed: u64) -> Scenario {
     // A scale with limits of 0.1 % of the mass, not finer than 0.1 g, in whole tenths of a gram.
     let propellant_limits_kg = (motor.propellant_mass_kg * 10.0).ceil().max(1.0) * 1e-4;
     Scenario {
-        id: format!("{kind:?}-{seed}"),
+        id: format!("{kind:?}{}-{seed}", if lighter { "Lighter" } else { "" }),
         seed,
         motor,
         stand,

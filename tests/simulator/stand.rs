@@ -67,6 +67,8 @@ pub struct Stand {
     pub orientation: Orientation,
     /// Undamped natural frequency, Hz, and damping ratio; `None`: stiff.
     pub resonance: Option<(f64, f64)>,
+    /// Share of the mass on the spring that is gone with the propellant; the frequency rises as it goes.
+    pub lightening: f64,
     /// Whether run.toml tells of it.
     pub resonance_told: bool,
     /// Force at the cell over force of the motor.
@@ -85,6 +87,7 @@ impl Default for Stand {
         Stand {
             orientation: Orientation::Horizontal,
             resonance: None,
+            lightening: 0.0,
             resonance_told: false,
             force_ratio: 1.0,
             drift_n_s: 0.0,
@@ -123,6 +126,35 @@ pub fn second_order(force: &[f64], step_s: f64, frequency_hz: f64, damping: f64,
     out
 }
 
+/// The same for a mass that falls: `inertia` is that of each sample over the first, kept over the step that ends there. Spring and
+/// dashpot stay, so that w goes with 1 / sqrt(inertia) and z with w.
+pub fn second_order_lightening(
+    force: &[f64],
+    inertia: &[f64],
+    step_s: f64,
+    frequency_hz: f64,
+    damping: f64,
+) -> Vec<f64> {
+    let Some(&first) = force.first() else { return Vec::new() };
+    let (mut y, mut v) = (first, 0.0);
+    let mut out = vec![y];
+    for (pair, mass) in force.windows(2).zip(&inertia[1..]) {
+        let z = damping / mass.sqrt();
+        let w = TAU * frequency_hz / mass.sqrt();
+        let wd = w * (1.0 - z * z).sqrt();
+        let (sin, cos) = (wd * step_s).sin_cos();
+        let decay = (-z * w * step_s).exp();
+        let s = (pair[1] - pair[0]) / step_s;
+        let a = y - pair[0] + 2.0 * z * s / w;
+        let b = (v - s + z * w * a) / wd;
+        let swing = a * cos + b * sin;
+        y = pair[1] - 2.0 * z * s / w + decay * swing;
+        v = s + decay * (-z * w * swing + wd * (b * cos - a * sin));
+        out.push(y);
+    }
+    out
+}
+
 /// Force at the cell, thrust counted positive, against true time.
 #[derive(Debug, Clone)]
 pub struct CellForce {
@@ -145,7 +177,15 @@ impl CellForce {
         if let Some((frequency_hz, damping)) = stand.resonance {
             // Until the ringing has fallen to exp(-14), a millionth.
             let extra = (14.0 / (damping * TAU * frequency_hz) / STEP_S) as usize;
-            values = second_order(&values, STEP_S, frequency_hz, damping, extra);
+            if stand.lightening > 0.0 {
+                let gone = |k: usize| curve.all.integral.get(k).copied().unwrap_or(whole) / whole;
+                let last = values.last().copied().unwrap_or(0.0);
+                values.resize(values.len() + extra, last);
+                let inertia: Vec<f64> = (0..values.len()).map(|k| 1.0 - stand.lightening * gone(k)).collect();
+                values = second_order_lightening(&values, &inertia, STEP_S, frequency_hz, damping);
+            } else {
+                values = second_order(&values, STEP_S, frequency_hz, damping, extra);
+            }
         }
         CellForce {
             dense: Dense::new(motor_start_s, values),
