@@ -182,7 +182,17 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
             shift: weight_n.unwrap_or(0.0),
         },
     };
-    let mut segmentation = events::find(&time_s, &force_n, inputs.log.interval_s, expectation);
+    let (mut clipped, mut clipped_at, mut never_quiet) = (Vec::new(), None, Vec::new());
+    for channel in &channels {
+        for found in clipping::find_clipping(&channel.column.values) {
+            if found.is_away_from_rest(&channel.column.values) {
+                never_quiet.extend(found.ranges.iter().cloned());
+            }
+            clipped_at = Some(found.limit);
+            clipped.extend(found.ranges);
+        }
+    }
+    let mut segmentation = events::find(&time_s, &force_n, inputs.log.interval_s, expectation, &never_quiet);
     let chosen =
         bursts::choose(&segmentation, &time_s, &run.check_loads, &run.reduction).map_err(|p| p.in_file(log_file))?;
     // Where the propellant was not weighed nobody knows where a vertical stand's zero will come to rest.
@@ -209,13 +219,6 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
     }
     widen_to_overrides(inputs, &time_s, &mut burn);
     bursts::join_quiet(&mut segmentation, &burn);
-    let (mut clipped, mut clipped_at) = (Vec::new(), None);
-    for channel in &channels {
-        for found in clipping::find_clipping(&channel.column.values) {
-            clipped_at = Some(found.limit);
-            clipped.extend(found.ranges);
-        }
-    }
     Ok(Record {
         inputs,
         gravity,

@@ -51,15 +51,23 @@ const START_SIGMAS: f64 = 8.0;
 
 struct Blocks {
     value: Vec<f64>,
+    /// Blocks that hold a reading cut by the converter or the amplifier: level for another reason than rest.
+    cut: Vec<bool>,
     size: usize,
     samples: usize,
 }
 
 impl Blocks {
-    fn new(data: &[f64], interval_s: f64) -> Self {
+    fn new(data: &[f64], interval_s: f64, cut: &[Range<usize>]) -> Self {
         let size = ((BLOCK_S / interval_s.max(1e-12)).round() as usize).clamp(1, data.len().max(1));
         let mean = |c: &[f64]| c.iter().sum::<f64>() / c.len() as f64;
-        Blocks { value: data.chunks(size).map(mean).collect(), size, samples: data.len() }
+        let value: Vec<f64> = data.chunks(size).map(mean).collect();
+        let mut in_cut = vec![false; value.len()];
+        for range in cut.iter().filter(|r| !r.is_empty()) {
+            let last = ((range.end - 1) / size).min(in_cut.len().saturating_sub(1));
+            in_cut[(range.start / size).min(last)..=last].fill(true);
+        }
+        Blocks { value, cut: in_cut, size, samples: data.len() }
     }
 
     fn len(&self) -> usize {
@@ -80,7 +88,12 @@ impl Blocks {
 /// nor a slope disturbs, and a low rank is taken, since some of any record is quiet.
 fn block_noise(blocks: &Blocks, window: usize, range: f64) -> f64 {
     let v = &blocks.value;
-    let second: Vec<f64> = v.windows(3).map(|w| (w[0] - 2.0 * w[1] + w[2]).abs()).collect();
+    let second: Vec<f64> = v
+        .windows(3)
+        .zip(blocks.cut.windows(3))
+        .filter(|(_, cut)| !cut.contains(&true))
+        .map(|(w, _)| (w[0] - 2.0 * w[1] + w[2]).abs())
+        .collect();
     let mut scatter: Vec<f64> = second
         .chunks(window.max(5))
         .filter(|c| c.len() >= 4)
@@ -97,9 +110,16 @@ fn block_noise(blocks: &Blocks, window: usize, range: f64) -> f64 {
     noise.max(floor).max(1e-6 * range)
 }
 
-/// Finds the events of a record with samples some `interval_s` apart.
-pub fn find(time_s: &[f64], data: &[f64], interval_s: f64, expectation: Expectation) -> Segmentation {
-    let blocks = Blocks::new(data, interval_s);
+/// Finds the events of a record with samples some `interval_s` apart. `cut`: samples at a limit of the converter or the amplifier, which
+/// are level without being at rest.
+pub fn find(
+    time_s: &[f64],
+    data: &[f64],
+    interval_s: f64,
+    expectation: Expectation,
+    cut: &[Range<usize>],
+) -> Segmentation {
+    let blocks = Blocks::new(data, interval_s, cut);
     let n = blocks.len();
     if n < 4 {
         return Segmentation::default();
@@ -135,6 +155,9 @@ impl Finder<'_> {
     /// Whether the blocks of `range` lie level within the noise, allowing `tolerance` of steady change from the first half
     /// to the second.
     fn is_level(&self, range: Range<usize>, tolerance: f64) -> bool {
+        if self.blocks.cut[range.clone()].contains(&true) {
+            return false;
+        }
         let middle = (range.start + range.end) / 2;
         let (first, second) = (self.blocks.mean(range.start..middle), self.blocks.mean(middle..range.end));
         let half = ((range.end - range.start) as f64 / 2.0).max(1.0);
@@ -328,7 +351,7 @@ mod tests {
     fn a_burn_and_a_hard_knock_after_it_are_two_events_and_the_burn_has_the_larger_impulse() {
         for rate in [10.0, 80.0, 1000.0, 10_000.0] {
             let (t, y) = record(rate, 20.0, 0.5, |t| boxcar(t, 5.0, 7.5, 100.0) + boxcar(t, 13.0, 13.11, 400.0));
-            let s = find(&t, &y, 1.0 / rate, PLAIN);
+            let s = find(&t, &y, 1.0 / rate, PLAIN, &[]);
             assert_eq!(s.events.len(), 2, "{rate} Hz: {:?}", s.events);
             let burn = s.events[0];
             assert!((burn.impulse - 250.0).abs() < 12.0, "{burn:?}");
@@ -341,7 +364,7 @@ mod tests {
     #[test]
     fn a_new_zero_after_the_burn_ends_it() {
         let (t, y) = record(200.0, 15.0, 0.3, |t| boxcar(t, 3.0, 6.0, 200.0) - boxcar(t, 6.0, 99.0, 3.0));
-        let s = find(&t, &y, 0.005, PLAIN);
+        let s = find(&t, &y, 0.005, PLAIN, &[]);
         assert_eq!(s.events.len(), 1);
         assert!((s.events[0].level_after + 3.0).abs() < 0.2, "{:?}", s.events);
         assert!(!s.events[0].cut_at_end);
@@ -350,7 +373,7 @@ mod tests {
     #[test]
     fn a_tail_that_outlasts_the_record_is_told() {
         let (t, y) = record(500.0, 4.0, 0.5, |t| if t < 0.5 { 0.0 } else { 150.0 * (-(t - 0.5) / 1.5).exp() });
-        let s = find(&t, &y, 0.002, PLAIN);
+        let s = find(&t, &y, 0.002, PLAIN, &[]);
         assert_eq!(s.events.len(), 1);
         assert!(s.events[0].cut_at_end && !s.events[0].cut_at_start);
     }
@@ -367,14 +390,14 @@ mod tests {
             }
         };
         let (t, y) = record(460.0, 14.2, 3.0, tail);
-        let s = find(&t, &y, 1.0 / 460.0, PLAIN);
+        let s = find(&t, &y, 1.0 / 460.0, PLAIN, &[]);
         assert!(s.events.last().is_some_and(|e| e.cut_at_end), "{:?}", s.events);
     }
 
     #[test]
     fn a_flat_plateau_is_not_taken_for_quiet() {
         let (t, y) = record(1000.0, 12.0, 0.05, |t| boxcar(t, 2.0, 3.0, 300.0) + boxcar(t, 3.0, 9.0, 60.0));
-        let s = find(&t, &y, 0.001, PLAIN);
+        let s = find(&t, &y, 0.001, PLAIN, &[]);
         assert_eq!(s.events.len(), 1, "{:?}", s.events);
         assert!((s.events[0].impulse - 660.0).abs() < 2.0);
     }
@@ -382,12 +405,28 @@ mod tests {
     #[test]
     fn a_dead_flat_record_has_no_event() {
         let t: Vec<f64> = (0..100).map(|i| i as f64 * 0.1).collect();
-        assert!(find(&t, &vec![8123.0; 100], 0.1, PLAIN).events.is_empty());
+        assert!(find(&t, &vec![8123.0; 100], 0.1, PLAIN, &[]).events.is_empty());
     }
 
     #[test]
     fn noise_alone_has_no_event() {
         let (t, y) = record(80.0, 60.0, 1.0, |_| 0.0);
-        assert!(find(&t, &y, 0.0125, PLAIN).events.is_empty());
+        assert!(find(&t, &y, 0.0125, PLAIN, &[]).events.is_empty());
+    }
+
+    #[test]
+    fn a_cut_plateau_is_no_quiet_record() {
+        // 2 s of rest with noise, 3 s cut at 70, 2 s of rest.
+        let t: Vec<f64> = (0..700).map(|i| f64::from(i) * 0.01).collect();
+        use rand::SeedableRng;
+        let mut rng = rand_chacha::ChaCha8Rng::seed_from_u64(5);
+        let mut noise =
+            || -> f64 { 0.3 * rand_distr::Distribution::<f64>::sample(&rand_distr::StandardNormal, &mut rng) };
+        let y: Vec<f64> = (0..700).map(|i| if (200..500).contains(&i) { 70.0 } else { noise() }).collect();
+        let told = std::iter::once(200..500).collect::<Vec<_>>();
+        let s = find(&t, &y, 0.01, PLAIN, &told);
+        assert_eq!(s.events.len(), 1, "{:?}", s.events);
+        assert!(!s.events[0].cut_at_end && s.events[0].end >= 500 && s.events[0].end < 505, "{:?}", s.events);
+        assert!(s.block_noise > 0.1, "{}", s.block_noise);
     }
 }

@@ -78,6 +78,10 @@ const EXPLAINED: f64 = 1.2;
 /// The course of a tail is not known to be exponential: at least this share of its impulse is uncertain.
 const COURSE_SHARE: f64 = 0.06;
 
+/// The fall must be plain: its rate so many standard errors from nil, and its time constant no longer than the burst so far.
+/// A level end is thrust that the record cuts off, and says nothing of how it went on.
+const FALL_SIGMAS: f64 = 3.0;
+
 /// Extrapolates the tail of a burst from its last samples: from the longest stretch up to the end of the record that an
 /// exponential explains within the noise (`noise_n`, standard deviation of a sample), none of it above 70 % of peak.
 pub fn extrapolate(time_s: &[f64], thrust_n: &[f64], smoothed_n: &[f64], peak_n: f64, noise_n: f64) -> Option<Tail> {
@@ -97,10 +101,11 @@ pub fn extrapolate(time_s: &[f64], thrust_n: &[f64], smoothed_n: &[f64], peak_n:
             let dof = length as f64 - 2.0;
             let rss: f64 = t.iter().zip(f).map(|(t, y)| (y - a * (-rate * t).exp()).powi(2)).sum();
             let limit = noise_n * noise_n * (EXPLAINED * dof + 3.0 * (2.0 * dof).sqrt());
-            if chosen.is_none() || rss <= limit.max(1e-12 * peak_n * peak_n * dof) {
+            let plain = rate > FALL_SIGMAS * covariance[(1, 1)].max(0.0).sqrt() && rate * (end - time_s[0]) > 1.0;
+            if plain && (chosen.is_none() || rss <= limit.max(1e-12 * peak_n * peak_n * dof)) {
                 chosen = Some((a, rate, covariance, length));
                 failures = 0;
-            } else {
+            } else if plain {
                 failures += 1;
             }
         }
@@ -143,5 +148,26 @@ mod tests {
     fn a_plateau_cannot_be_continued() {
         let t: Vec<f64> = (0..400).map(|i| f64::from(i) * 0.005).collect();
         assert_eq!(extrapolate(&t, &[30.0; 400], &[30.0; 400], 50.0, 0.1), None);
+    }
+
+    #[test]
+    fn noise_about_a_level_is_no_tail() {
+        use rand::SeedableRng;
+        use rand_distr::{Distribution, StandardNormal};
+        for seed in 0..200 {
+            let mut rng = rand_chacha::ChaCha8Rng::seed_from_u64(seed);
+            let t: Vec<f64> = (0..400).map(|i| f64::from(i) * 0.005).collect();
+            let f: Vec<f64> = t
+                .iter()
+                .map(|_| {
+                    let z: f64 = StandardNormal.sample(&mut rng);
+                    30.0 + 0.5 * z
+                })
+                .collect();
+            if let Some(tail) = extrapolate(&t, &f, &f, 50.0, 0.5) {
+                // A stretch of noise may fall by chance, but never so slowly that the thrust would go on and on.
+                assert!(tail.impulse < 30.0 * 2.0, "{seed} {tail:?}");
+            }
+        }
     }
 }

@@ -3,7 +3,7 @@
 use super::runs::{Source, unreadable};
 use crate::burn::events::{self, Expectation};
 use crate::calibration;
-use crate::condition::{quiet, ringing};
+use crate::condition::{clipping, quiet, ringing};
 use crate::load;
 use crate::log::{Log, ReadRequest};
 use crate::problem::Problem;
@@ -113,7 +113,12 @@ pub fn findings(log: &Log) -> InspectFindings {
             continue;
         }
         let nothing_known = Expectation { relative_shift: 0.0, shift: 0.0 };
-        let parts = events::find(&log.time_s, &values, log.interval_s, nothing_known);
+        let cut: Vec<_> = clipping::find_clipping(&values)
+            .into_iter()
+            .filter(|found| found.is_away_from_rest(&values))
+            .flat_map(|found| found.ranges)
+            .collect();
+        let parts = events::find(&log.time_s, &values, log.interval_s, nothing_known, &cut);
         if let Some(longest) = parts.quiet.iter().max_by_key(|range| range.len())
             && let Some(fit) = quiet::fit(&log.time_s, &values, longest.clone(), 0.0)
         {

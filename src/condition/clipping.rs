@@ -25,7 +25,18 @@ impl Clipping {
     pub fn count_within(&self, from: usize, to: usize) -> usize {
         self.ranges.iter().map(|range| range.end.min(to).saturating_sub(range.start.max(from))).sum()
     }
+
+    /// Whether the limit lies far from the level that the record mostly keeps: then what lies at it is cut thrust and no quiet record. A
+    /// converter that cannot read below nil may well cut the quiet record itself.
+    pub fn is_away_from_rest(&self, values: &[f64]) -> bool {
+        let finite: Vec<f64> = values.iter().copied().filter(|v| v.is_finite()).collect();
+        let (low, high) = finite.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(*v), h.max(*v)));
+        (self.limit - median(finite)).abs() > FAR_FROM_REST * (high - low)
+    }
 }
+
+/// Share of the record's range from its median to a limit that it does not rest on.
+const FAR_FROM_REST: f64 = 0.3;
 
 /// Fewer equal readings in a row prove nothing.
 const SHORTEST_RUN: usize = 3;

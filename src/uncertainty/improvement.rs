@@ -28,6 +28,7 @@ fn remedy(source: &str) -> Option<&'static str> {
         "interval ends" => "sample faster, with less noise",
         "ignition signal" => "sample the igniter faster",
         "tail beyond the record" => "record until the stand is quiet",
+        "stand's response" => "log knocks on the loaded stand",
         "pressure scale" => "have the transducer calibrated",
         "air pressure" => "state air_pressure",
         "zero of the pressure" => "record more quiet before ignition",
