@@ -45,6 +45,9 @@ pub struct Reduction {
 const SHIFT_HORIZONTAL: f64 = 0.02;
 const SHIFT_VERTICAL: f64 = 0.06;
 
+/// From this share of the peak on, a swing that may be the stand's leaves no more than an upper bound of the peak.
+const SWING_SHARE: f64 = 0.01;
+
 /// The record on its way through the steps.
 struct Record<'a> {
     inputs: &'a Inputs,
@@ -88,6 +91,13 @@ pub fn reduce(inputs: &Inputs) -> Result<Reduction, Problem> {
     let stand = stand::find(&record, &zero);
     let curve = curve::condition(&record, &zero, stand.as_ref())?;
     let mut figures = figures::measure(&record, &zero, &curve)?;
+    if let Some(peak) = &mut figures.quantities.peak_thrust
+        && peak.bound.is_none()
+        && stand.as_ref().is_some_and(|s| !s.taken_out && s.share_of_peak.unwrap_or(0.0) > SWING_SHARE)
+    {
+        // The swing may be the stand's, and then the motor's own peak lies lower.
+        peak.bound = Some("upper".to_string());
+    }
     let checks = checks::all(&record, &zero, &curve, &figures, stand.as_ref());
     let bursts = describe_bursts(&record, &figures);
     let curves = curve::for_display(&record, &zero, &curve, &figures);

@@ -157,3 +157,16 @@ fn inspect_reads_a_tap_test() {
     assert!((number("resonance_hz") / hz - 1.0).abs() < 0.01, "{found}");
     assert!((number("resonance_damping_ratio") / damping - 1.0).abs() < 0.2, "{found}");
 }
+
+/// A stand that swings a few times during the burn, or faster than the sampling follows, is told and not trusted.
+#[test]
+fn a_resonance_among_the_motors_own_frequencies_or_beyond_the_sampling_is_flagged() {
+    for (hz, words) in [(4.0, "Stiffen the stand"), (300.0, "Log faster")] {
+        let mut scenario = Scenario::default();
+        scenario.stand.resonance = Some((hz, 0.03));
+        scenario.stand.resonance_told = true;
+        let firing = reduced(&scenario).0.firing;
+        let check = firing.checks.iter().find(|c| c.id == "ringing").expect("the check");
+        assert!(check.status != burntally::firing::Status::Pass && check.message.contains(words), "{hz}: {check:?}");
+    }
+}

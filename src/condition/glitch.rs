@@ -16,6 +16,12 @@ const WINDOW: usize = 24;
 const TIMES_NOISE: f64 = 12.0;
 /// And by more than so many times what the readings of its own sides move by.
 const TIMES_SIDES: f64 = 5.0;
+/// On an edge the sides move by much: there a lone reading must be jumped up to and down from, by nearly the same amount each, more than
+/// so many times as far as any other two neighbours near it lie apart. A thrust that rises so much faster at the last and falls as fast
+/// is none.
+const TIMES_JUMPS: f64 = 2.0;
+/// Share of the smaller jump by which its two neighbours may differ.
+const JUMPS_ALIKE: f64 = 0.15;
 /// Longest run of bad readings that is bridged: a zero row may come twice.
 const LONGEST_GLITCH: usize = 2;
 /// Longest run of missing readings that is bridged.
@@ -156,8 +162,21 @@ fn is_glitch(values: &[f64], index: usize, length: usize, floor: f64) -> bool {
     (index..after).all(|at| {
         let share = (at - index + 1) as f64 / across;
         let off = (values[at] - (b + share * (a - b))).abs();
-        off > TIMES_NOISE * noise && off > TIMES_SIDES * moves
+        off > TIMES_NOISE * noise && (off > TIMES_SIDES * moves || (length == 1 && is_jumped_to(values, at)))
     })
+}
+
+/// Whether both jumps, to the reading and from it, dwarf all others on either side.
+fn is_jumped_to(values: &[f64], at: usize) -> bool {
+    let (b, a) = (values[at - 1], values[at + 1]);
+    let least = (values[at] - b).abs().min((values[at] - a).abs());
+    let jumps = |side: &[f64]| side.windows(2).map(|w| (w[1] - w[0]).abs()).fold(0.0, f64::max);
+    let (before, behind) =
+        (&values[at.saturating_sub(SIDE + 1)..at], &values[at + 1..(at + SIDE + 2).min(values.len())]);
+    before.len() > SIDE
+        && behind.len() > SIDE
+        && least > TIMES_JUMPS * jumps(before).max(jumps(behind))
+        && (a - b).abs() < JUMPS_ALIKE * least
 }
 
 fn range(side: &[f64]) -> f64 {
@@ -320,6 +339,23 @@ mod tests {
                 (8100.0 + thrust * (1.0 + rough * burning) + noise * quiet).round()
             })
             .collect()
+    }
+
+    #[test]
+    fn a_wild_reading_at_the_end_of_the_rise_is_repaired_and_a_spike_there_is_not() {
+        let rise = |top: &[f64]| -> Vec<f64> {
+            let mut random = ChaCha8Rng::seed_from_u64(7);
+            let mut noise = || -> f64 { StandardNormal.sample(&mut random) };
+            let mut values: Vec<f64> = (0..50).map(|_| 10.0 * noise()).collect();
+            values.extend([2000.0, 4000.0, 6000.0, 6500.0]);
+            values.extend(top);
+            values.extend((0..50).map(|_| 6500.0 + 10.0 * noise()));
+            values
+        };
+        assert_eq!(repair(&rise(&[11_500.0])).1, [54]);
+        // As high as the rise was fast, or as wide as two readings, it may be the motor's.
+        assert!(repair(&rise(&[8500.0])).1.is_empty());
+        assert!(repair(&rise(&[11_500.0, 9000.0])).1.is_empty());
     }
 
     #[test]

@@ -178,7 +178,13 @@ fn identify(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     };
     if let Some(ring) = seen(t, f, t[half], t[half] + 0.6 * burst_s) {
         let lead = ((CONFIRMED_LEAD / ring.frequency_hz / record.interval_s()) as usize).max(8);
-        let sure = confirmed(&f[half.saturating_sub(lead)..inside.end], record, &ring, noise / highest);
+        let from = half.saturating_sub(lead);
+        let mut course = f[from..inside.end].to_vec();
+        // A lone wild reading on the swing, undone with it, would be wilder.
+        for (i, value) in response::impossible(&t[from..inside.end], &course, ring.frequency_hz, noise) {
+            course[i] = value;
+        }
+        let sure = confirmed(&course, record, &ring, noise / highest);
         return Some(of(ring, "ring after ignition", Some(ring.amplitude / highest), sure));
     }
     let knock = record

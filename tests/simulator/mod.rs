@@ -294,7 +294,7 @@ impl Scenario {
                 value: Box::new(move |t| if t >= signal_s && t < signal_s + 0.8 { 11.6 } else { 0.0 }),
             });
         }
-        let check = self.check_load.map(|c| (c.from_s, c.to_s, c.mass_kg * self.gravity_m_s2));
+        let check = self.check_load.map(|c| (c.from_s, c.to_s, self.stand.force_ratio * c.mass_kg * self.gravity_m_s2));
         let force_at = |t: f64, window: f64| {
             let aside = check.map_or(0.0, |(from, to, n)| if t > from && t - window < to { n } else { 0.0 });
             force.mean_before(t, window) + aside
