@@ -264,10 +264,17 @@ fn a_ringing_stand_is_seen_through() {
 /// Firings that gave trouble once: spikes right after the rise, a glitch within the ring after burn-out, stamps off by some per cent.
 #[test]
 fn ringing_firings_that_gave_trouble() {
-    let seeds = [3001, 4002, 4010, 4016, 4017, 7008, 14_011, 14_017, 20_036, 20_058];
+    let seeds = [3001, 4002, 4010, 4016, 4017, 7008, 14_011, 14_017, 20_036, 20_058, 94_001];
     let cases: Vec<Case> = seeds.into_par_iter().map(|seed| run(random_scenario_kind(Kind::Ringing, seed))).collect();
     let cases: Vec<&Case> = cases.iter().collect();
     all_hold(&judge("once troublesome", &cases, &rows(each(0.0015), each(0.005), Some(each(0.003)))));
+    // What the swinging stand holds back at the first crossing belongs to the burn: without it the average is up to 0.17 % high.
+    for case in cases {
+        let reduction = case.reduction.as_ref().expect("a reduction");
+        let average = reduction.firing.quantities.average_thrust.as_ref().expect("an average");
+        let off = (average.value - case.truth.average_thrust_n) / average.standard_uncertainty.expect("an uncertainty");
+        assert!(off.abs() < 3.0, "{}: {average:?} {}", case.scenario.id, case.truth.average_thrust_n);
+    }
 }
 
 /// Undoing a swing that was not there is worse than leaving one.

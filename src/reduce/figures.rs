@@ -197,8 +197,13 @@ pub fn measure(record: &Record<'_>, zero: &Zero, curve: &Curve) -> Result<Figure
         if end_s > last_s { tail.impulse - tail.thrust_at(end_s - last_s) * tail.time_constant_s } else { 0.0 }
     });
     // Edges that a converter's averaging hides are drawn in the curve; between them the samples themselves are summed.
+    let of_curve = |from_s: f64, to_s: f64| integral::between(&curve.time_s, &curve.thrust_n, from_s, to_s);
     let burn_impulse = if curve.rise.is_some() || curve.fall.is_some() {
-        integral::between(&curve.time_s, &curve.thrust_n, start_s, end_s)
+        of_curve(start_s, end_s)
+    } else if curve.stand_u.is_some() {
+        // A stand in full swing where the interval begins holds momentum back: readings tell the whole impulse, the curve what of it
+        // lies outside.
+        integral::trapezoid(bt, bf) - of_curve(bt[0], start_s) - of_curve(end_s.min(last_s), last_s)
     } else {
         integral::between(bt, bf, start_s, end_s)
     } + beyond;
