@@ -150,21 +150,15 @@ fn identify(record: &Record<'_>, zero: &Zero) -> Option<Stand> {
     if let Some(frequency) = told.natural_frequency_hz {
         // A frequency without a damping ratio: what bolted steel stands show, 1 to 5 % (from memory).
         let damping = told.damping_ratio.map_or(0.03, |d| d.value);
-        return Some(Stand {
+        let ring = Ring {
             frequency_hz: frequency.value,
             frequency_u_hz: frequency.standard_uncertainty.unwrap_or(0.01 * frequency.value),
             damping_ratio: damping,
             damping_u: told.damping_ratio.and_then(|d| d.standard_uncertainty).unwrap_or(0.3 * damping),
-            source: "run.toml",
-            share_of_peak: None,
-            taken_out: true,
-            frequency_after_hz: None,
-            inertia: Vec::new(),
-            ignition: None,
-            readings_n: Vec::new(),
-            impossible: 0,
-            contradicts: None,
-        });
+            amplitude: 0.0,
+            explained: 1.0,
+        };
+        return Some(of(ring, "run.toml", None, true));
     }
     let t = &record.time_s[zero.window.clone()];
     let f = &zero.thrust_n;

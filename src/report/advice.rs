@@ -13,7 +13,7 @@ pub fn for_check(id: &str) -> Option<&'static str> {
         "sampling" => "sample faster: 80 samples a second or more",
         "gaps" => "look for a loose connector or a slow memory card; figures across a gap are guesses",
         "repairs" => "look at the lines named in the report; shield the cable if they are many",
-        "ringing" => "stiffen the stand, or give [stand] natural_frequency from a tap test",
+        "ringing" => "stiffen the stand; a tap test for [stand] natural_frequency makes this surer",
         "noise" => "shield and ground the cell's cable; sample faster",
         "polarity" => "give the calibration the sign the stand has, or mount the cell the other way round",
         "propellant_mass" => "look at baseline_shift and at what may have fallen off; weigh the motor before and after",

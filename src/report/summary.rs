@@ -148,7 +148,7 @@ fn figures(firing: &Firing, view: View, lines: &mut Vec<String>) {
             lines.push(String::new());
         }
     }
-    lines.push("  ± is the half-width of the 95 % interval; ≥ marks a lower bound.".to_owned());
+    lines.push("  ± is the half-width of the 95 % interval; ≥ marks a lower bound, ≤ an upper.".to_owned());
     if without_interval {
         lines.push("  ± not known: the error of the force scale, or of a mass, was not stated.".to_owned());
     }
