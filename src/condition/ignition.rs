@@ -72,6 +72,8 @@ const HAND_OVER: f64 = 0.75;
 const MUCH_LEFT: f64 = 1.5;
 /// ... or no model is believed.
 const MOST_LEFT: f64 = 2.0;
+/// What is left may exceed a very low noise by more, as a share of the level.
+const LITTLE_LEFT: f64 = 0.002;
 /// Searches of each model, from as many beginnings.
 const BEGINNINGS: usize = 2;
 /// Models with less evidence than this share are left out.
@@ -181,7 +183,11 @@ impl Readings {
     }
 
     fn within(&self, model: &Model, mut p: Parameters) -> Parameters {
-        let shapes = if model.rise == Rise::Ramp { (-0.5, 1.5) } else { (-0.5, 2.0) };
+        let shapes = match model.rise {
+            Rise::Ramp => (-0.5, 1.5),
+            Rise::Approach | Rise::ApproachThenLevel => (-0.5, 2.0),
+            Rise::Soft => (-1.5, 1.5),
+        };
         p[0] = p[0].clamp(-BEFORE + 0.1, 0.3);
         p[1] = p[1].clamp(0.02f64.ln(), 1.5f64.ln());
         p[2] = p[2].clamp(shapes.0, shapes.1);
@@ -193,7 +199,10 @@ impl Readings {
     /// Where a search may begin: the best few of a coarse grid.
     fn beginnings(&self, model: &Model) -> Vec<Parameters> {
         let (shape, _) = model.expected_shape();
-        let times: [f64; 4] = if model.rise == Rise::Ramp { [0.1, 0.2, 0.4, 0.65] } else { [0.05, 0.1, 0.2, 0.4] };
+        let times: [f64; 4] = match model.rise {
+            Rise::Ramp | Rise::Soft => [0.1, 0.2, 0.4, 0.65],
+            Rise::Approach | Rise::ApproachThenLevel => [0.05, 0.1, 0.2, 0.4],
+        };
         let starts = times.iter().flat_map(|time| [-0.55, -0.45, -0.35, -0.27].map(|start| (start, time.ln())));
         let mut all: Vec<(f64, Parameters)> = starts
             .map(|(start, time)| Parameters::from([start, time, shape, 0.0, self.known.damping_ratio]))
@@ -413,7 +422,7 @@ fn fit_until(
     let length = (until_s - half_s) / period_s + 1.0;
     let mut fits: Vec<Fitted> = RISES.iter().flat_map(|rise| readings.fit_rise(*rise, length)).collect();
     let best = fits.iter().max_by(|a, b| a.evidence.total_cmp(&b.evidence))?;
-    if best.misfit > MOST_LEFT {
+    if best.misfit > MOST_LEFT && best.misfit.sqrt() * readings.noise > LITTLE_LEFT {
         return None;
     }
     // Where even the best leaves more than the noise (a hum, glitches mended), evidence and errors count accordingly less.

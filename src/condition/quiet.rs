@@ -109,6 +109,16 @@ pub fn fit_with(time_s: &[f64], data: &[f64], range: Range<usize>, at_s: f64, ev
 /// Largest ratio of the variance that one line leaves beyond two to the variance within, at which one line is kept.
 const ONE_LINE_LIMIT: f64 = 4.0;
 
+/// One line through two quiet stretches.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Together {
+    /// The zero before and after.
+    pub fits: [QuietFit; 2],
+    /// By how much the later stretch stands off the line of the earlier one, and its standard uncertainty; that is nil where the step was given.
+    pub step: f64,
+    pub step_u: f64,
+}
+
 /// Fits one line to two quiet stretches, the later one shifted by `step` or, where that is `None`, by a step found with it.
 /// Gives the zero at `at_s[0]` (before) and `at_s[1]` (after), or `None` where two separate lines explain the stretches
 /// plainly better: then the zero did not run steadily.
@@ -118,7 +128,7 @@ pub fn fit_together(
     ranges: [Range<usize>; 2],
     at_s: [f64; 2],
     step: Option<f64>,
-) -> Option<[QuietFit; 2]> {
+) -> Option<Together> {
     let apart = [fit(time_s, data, ranges[0].clone(), at_s[0])?, fit(time_s, data, ranges[1].clone(), at_s[1])?];
     let sums = |range: &Range<usize>, shift: f64| -> [f64; 6] {
         let mut s = [0.0; 6];
@@ -186,7 +196,16 @@ pub fn fit_together(
             ..apart[k]
         }
     };
-    Some([at(0), at(1)])
+    Some(Together {
+        fits: [at(0), at(1)],
+        step: step.unwrap_or(c[2]),
+        step_u: if free { covariance[(2, 2)].max(0.0).sqrt() } else { 0.0 },
+    })
+}
+
+/// Slope of a quiet stretch, whether the evidence asks for one or not, and its standard uncertainty; unit per second.
+pub fn slope(time_s: &[f64], data: &[f64], range: Range<usize>) -> Option<(f64, f64)> {
+    fit_with(time_s, data, range, 0.0, 0.0).map(|q| (q.slope_per_s, q.slope_u))
 }
 
 /// A zero that drifts steadily and, from ignition on, by warmth besides.
@@ -355,7 +374,8 @@ mod tests {
             .map(|(z, t)| 1.0 + 0.05 * t - if *t > 10.0 { 3.0 } else { 0.0 } + 0.2 * z)
             .collect();
         for step in [Some(-3.0), None] {
-            let [a, b] = fit_together(&t, &y, [0..400, 1300..2000], [4.0, 13.0], step).expect("one line");
+            let found = fit_together(&t, &y, [0..400, 1300..2000], [4.0, 13.0], step).expect("one line");
+            let [a, b] = found.fits;
             assert!((a.level - 1.2).abs() < 4.0 * a.level_u && a.level_u < 0.03, "{step:?} {a:?}");
             assert!((b.level + 1.35).abs() < 4.0 * b.level_u && b.level_u < 0.03, "{step:?} {b:?}");
         }

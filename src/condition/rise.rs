@@ -14,9 +14,15 @@ pub enum Rise {
     Approach,
     /// The same, with a level that stays as it is until the rise is 95 % done.
     ApproachThenLevel,
+    /// (1 + exp(4 − 8 x))^−k, k = exp a: an S without ends, with a foot before its start; even at a = 0 (F. J. Richards, J. Exp. Bot. 10
+    /// (1959) 290; from memory).
+    Soft,
 }
 
-pub const RISES: [Rise; 3] = [Rise::Ramp, Rise::Approach, Rise::ApproachThenLevel];
+pub const RISES: [Rise; 4] = [Rise::Ramp, Rise::Approach, Rise::ApproachThenLevel, Rise::Soft];
+
+/// Times of the rise before its start from which a foot without beginning counts as nil (e⁻¹² of the level).
+const FOOT: f64 = 1.0;
 
 /// Knots of the level after the rise, periods: a spline of straight pieces, closer where the reading tells more.
 const KNOTS: [f64; 14] = [0.0, 0.1, 0.2, 0.34, 0.5, 0.75, 1.1, 1.6, 2.2, 3.2, 4.6, 6.5, 9.2, 13.0];
@@ -58,13 +64,17 @@ impl Model {
 
     /// Mean and standard deviation expected of the shape.
     pub fn expected_shape(&self) -> (f64, f64) {
-        if self.rise == Rise::Ramp { (0.5, 0.6) } else { (0.3, 0.5) }
+        match self.rise {
+            Rise::Ramp => (0.5, 0.6),
+            Rise::Approach | Rise::ApproachThenLevel => (0.3, 0.5),
+            Rise::Soft => (0.0, 0.4),
+        }
     }
 
     /// Time from the start after which the level begins its own course, periods.
     pub fn risen(&self, place: Place) -> f64 {
         match self.rise {
-            Rise::Ramp => place.log_time.exp(),
+            Rise::Ramp | Rise::Soft => place.log_time.exp(),
             // 1 − e⁻³ = 95 %.
             Rise::Approach | Rise::ApproachThenLevel => place.log_time.exp() * 3f64.powf((-place.shape).exp()),
         }
@@ -74,10 +84,10 @@ impl Model {
     pub fn row(&self, place: Place, t: f64, row: &mut [f64]) {
         row.fill(0.0);
         let since = t - place.start;
-        if since <= 0.0 {
+        let x = since / place.log_time.exp();
+        if x <= if self.rise == Rise::Soft { -FOOT } else { 0.0 } {
             return;
         }
-        let x = since / place.log_time.exp();
         let (risen, from) = match self.rise {
             Rise::Ramp => {
                 let x = x.min(1.0);
@@ -88,6 +98,7 @@ impl Model {
             }
             Rise::Approach => (-(-x.powf(place.shape.exp())).exp_m1(), 0.0),
             Rise::ApproachThenLevel => (-(-x.powf(place.shape.exp())).exp_m1(), self.risen(place)),
+            Rise::Soft => ((1.0 + (4.0 - 8.0 * x).exp()).powf(-place.shape.exp()), 0.0),
         };
         let u = (since - from).max(0.0);
         let last = self.knots.len() - 1;

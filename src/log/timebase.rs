@@ -4,7 +4,7 @@ use super::Gap;
 use super::columns::{TimeColumn, infer_unit};
 use super::layout::Kind;
 use super::ledger::Ledger;
-use super::spread::{clock_grid, resolve_repeats};
+use super::spread::{clock_grid, resolve_repeats, straighten};
 use super::stamps::{MANY_STEPS, even_out, moduli, sampled_steps, untangle, usual_step};
 use super::table::Table;
 use crate::problem::Problem;
@@ -211,9 +211,22 @@ fn settle(
 ) -> f64 {
     let grid = clock_grid(sorted, step);
     let mut resolution = grid;
+    let places: Vec<f64> = record.iter().map(|index| f64::from(lines[*index as usize])).collect();
+    let mut put_on_lines = |stamps: &mut [f64]| {
+        findings.push(format!("the clock's stamps step by {:.6} s", grid * unit_s));
+        let interval = usual_interval(stamps, grid);
+        let moved = straighten(stamps, &places, grid, interval);
+        if moved > 0 {
+            let message = format!(
+                "{moved} stamps rounded to that step put on straight lines that all of them lie within a step of"
+            );
+            findings.push(message.clone());
+            ledger.entry(None, "time", message);
+        }
+    };
     if sorted.windows(2).all(|pair| pair[1] > pair[0]) {
         if grid > 0.0 {
-            findings.push(format!("the clock's stamps step by {:.6} s", grid * unit_s));
+            put_on_lines(sorted);
         }
         return resolution;
     }
@@ -225,7 +238,6 @@ fn settle(
         let (now, then) = (record[index] as usize, record[index - 1] as usize);
         table.channels.iter().all(|channel| channel[now] == channel[then])
     };
-    let places: Vec<f64> = record.iter().map(|index| f64::from(lines[*index as usize])).collect();
     let repeats = resolve_repeats(sorted, &same, &unchanged, &places, step);
     if repeats.coarse {
         resolution = step;

@@ -3,7 +3,7 @@
 use super::Record;
 use crate::burn::events::Event;
 use crate::condition::baseline::Baseline;
-use crate::condition::quiet::{self, QuietFit};
+use crate::condition::quiet::{self, QuietFit, Together};
 use crate::measure::integral;
 use crate::run::Orientation;
 use std::ops::Range;
@@ -98,8 +98,13 @@ pub fn correct(record: &Record<'_>) -> Zero {
         _ => (before_fit, after_fit),
     };
     let plain = Baseline::new(before_fit, after_fit, start_s, end_s, 0.0);
-    let shift = plain.shift_n();
-    let shift_u = plain.shift_u_n().unwrap_or(0.0);
+    // What left the stand is the step beside the drift, which goes on through the burn.
+    let step = match (&before, &after) {
+        (Some(b), Some(a)) if downward != 0.0 => weight_step(record, b, a, [start_s, end_s]),
+        _ => None,
+    };
+    let shift = step.map(|s| s.0).or(plain.shift_n());
+    let shift_u = step.map(|s| s.1).or(plain.shift_u_n()).unwrap_or(0.0);
     let mut wrong_way = false;
     let weight_shift_n = match (downward == 0.0, weighed, shift) {
         (true, ..) => 0.0,
@@ -114,7 +119,7 @@ pub fn correct(record: &Record<'_>) -> Zero {
     let mut baseline = Baseline::new(before_fit, after_fit, start_s, end_s, weight_shift_n);
     baseline.thermal = thermal;
     let drift_n = baseline.drift_n;
-    let excess = (drift_n * drift_n - shift_u * shift_u).max(0.0).sqrt();
+    let excess = (drift_n * drift_n - plain.shift_u_n().unwrap_or(0.0).powi(2)).max(0.0).sqrt();
     // With a zero on one side only, whatever slope its stretch could hide goes on through the burst, within reason.
     let one_sided = match (before_fit, after_fit) {
         (Some(q), None) | (None, Some(q)) => (0.5 * q.slope_u * burst_s).min(ONE_SIDED_SHARE * burn.peak.abs()),
@@ -157,6 +162,30 @@ fn known_step(record: &Record<'_>, downward: f64) -> Option<f64> {
     }
 }
 
+/// By how much the zero steps beside a steady drift, and its standard uncertainty: `None` where no drift is seen, so that the plain difference
+/// says it best.
+///
+/// The drift through the burn is what the slopes on both sides make of it; half of what these differ by, and of what they may differ by
+/// unseen, counts as the standard uncertainty of the drift between them.
+fn weight_step(record: &Record<'_>, before: &Range<usize>, after: &Range<usize>, at_s: [f64; 2]) -> Option<(f64, f64)> {
+    let (t, f) = (&record.time_s, &record.force_n);
+    let slopes = [quiet::slope(t, f, before.clone())?, quiet::slope(t, f, after.clone())?];
+    let length = at_s[1] - at_s[0];
+    let [(b, b_u), (a, a_u)] = slopes;
+    let bend = 0.5 * length * (a - b).hypot(a_u.hypot(b_u));
+    match quiet::fit_together(t, f, [before.clone(), after.clone()], at_s, None) {
+        Some(one) => {
+            let q = one.fits[0];
+            (q.slope_per_s.abs() >= SLOPE_SEEN * q.slope_u).then(|| (one.step, one.step_u.hypot(bend)))
+        }
+        None => {
+            let (b, a) = (quiet::fit(t, f, before.clone(), at_s[0])?, quiet::fit(t, f, after.clone(), at_s[1])?);
+            let drift = 0.5 * (b.slope_per_s + a.slope_per_s) * length;
+            Some((a.level - b.level - drift, a.level_u.hypot(b.level_u).hypot(bend)))
+        }
+    }
+}
+
 /// Zero at both ends of the burst: one line through both quiet stretches where that explains them, else a line each.
 fn levels(
     record: &Record<'_>,
@@ -170,7 +199,9 @@ fn levels(
     match (before, after) {
         (Some(b_range), Some(a_range)) => {
             match quiet::fit_together(t, f, [b_range.clone(), a_range.clone()], at_s, step) {
-                Some([b, a]) if step.is_none() && b.slope_per_s.abs() < SLOPE_SEEN * b.slope_u => {
+                Some(Together { fits: [b, a], .. })
+                    if step.is_none() && b.slope_per_s.abs() < SLOPE_SEEN * b.slope_u =>
+                {
                     // No drift to be seen: the weight that left is the difference of two plain means, and what drift may hide in it counts.
                     let plain = |r: &Range<usize>, q: QuietFit, at: f64, hidden: f64| {
                         let n = r.len().max(1) as f64;
@@ -188,7 +219,7 @@ fn levels(
                     let hidden = HIDDEN_DRIFT * b.slope_u * (at_s[1] - at_s[0]);
                     (Some(plain(b_range, b, at_s[0], hidden)), Some(plain(a_range, a, at_s[1], hidden)))
                 }
-                Some([b, a]) => (Some(b), Some(a)),
+                Some(Together { fits: [b, a], .. }) => (Some(b), Some(a)),
                 None => (quiet::fit(t, f, b_range.clone(), at_s[0]), quiet::fit(t, f, a_range.clone(), at_s[1])),
             }
         }
