@@ -270,6 +270,13 @@ impl Work<'_> {
                 ..self.zero_effect(source, course)
             });
         }
+        if mass_per_newton != 0.0
+            && let (Some((_, mass_u)), Some(level_u)) = (self.zero.shift_mass_kg, baseline.shift_u_n())
+        {
+            // What the drift through the burn may have done beside what the levels at its ends say.
+            let beyond = (mass_u.powi(2) - (level_u * mass_per_newton).powi(2)).max(0.0).sqrt();
+            effects.push(Effect { propellant_mass: beyond, ..Effect::of("course of the zero's drift") });
+        }
         if self.zero.drift_u_n > 0.0 {
             let u = self.zero.drift_u_n;
             // Between a straight line and a step at either end.
