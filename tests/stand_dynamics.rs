@@ -170,3 +170,34 @@ fn a_resonance_among_the_motors_own_frequencies_or_beyond_the_sampling_is_flagge
         assert!(check.status != burntally::firing::Status::Pass && check.message.contains(words), "{hz}: {check:?}");
     }
 }
+
+/// 480 samples a second by a clock of whole milliseconds: rounded stamps hide neither the rate nor, on a swinging stand, the rise.
+#[test]
+fn stamps_of_whole_milliseconds() {
+    for seed in 1..=6 {
+        let mut scenario = Scenario { seed, ..Scenario::default() };
+        scenario.stand.resonance = Some((45.0, 0.035));
+        scenario.logger.rate_hz = 480.0;
+        scenario.logger.time = simulator::logger::TimeStyle::Millis { decimals: 0 };
+        scenario.motor.rise = simulator::motor::RiseKind::SCurve;
+        scenario.motor.rise_s = 0.02;
+        let (reduction, truth) = reduced(&scenario);
+        let firing = &reduction.firing;
+        assert!(
+            (firing.conditioning.sample_rate_hz / 480.0 - 1.0).abs() < 1e-4,
+            "{}",
+            firing.conditioning.sample_rate_hz
+        );
+        let q = &firing.quantities;
+        for (name, figure, truth) in [
+            ("burn time", &q.burn_time, truth.burn_time_s),
+            ("initial thrust", &q.initial_thrust, truth.initial_thrust_n),
+            ("peak", &q.peak_thrust, truth.peak_thrust_n),
+        ] {
+            let figure = figure.as_ref().expect("a figure");
+            let off = (figure.value - truth) / figure.standard_uncertainty.expect("an uncertainty");
+            println!("{seed} {name} {off}");
+            assert!(off.abs() < 3.0 && (figure.value / truth - 1.0).abs() < 2e-3, "{seed} {name}: {figure:?} {truth}");
+        }
+    }
+}

@@ -127,6 +127,28 @@ fn specific_impulse_from_the_weight_that_left() {
     }
 }
 
+/// A zero that drifts by 2 % of the propellant's weight a second, plain on both sides of the burn, is not taken for propellant.
+#[test]
+fn a_steady_drift_is_no_propellant() {
+    let drifting = (FIRST..FIRST + COUNT)
+        .map(|seed| {
+            let mut scenario = scenario(seed, Orientation::NozzleUp);
+            let weight_n = scenario.motor.propellant_mass_kg * scenario.gravity_m_s2;
+            scenario.propellant_told = false;
+            scenario.stand.drift_n_s = if seed % 2 == 0 { 0.02 } else { -0.02 } * weight_n;
+            scenario.stand.thermal = None;
+            scenario.cell.noise_n = scenario.cell.noise_n.min(0.02 * weight_n);
+            scenario.cell.slow_noise_n = 0.0;
+            scenario.before_s = scenario.before_s.max(5.0);
+            scenario.after_s = scenario.after_s.max(8.0);
+            scenario
+        })
+        .collect();
+    let all = outcomes(drifting, |q| &q.specific_impulse, |t| t.specific_impulse_s);
+    // Of 2 % a second over some seconds of burn, nothing may be left.
+    hold("specific impulse beside a drift", &all, 0.015, 0.85);
+}
+
 /// One per cent of peak in all, half of it steady, half growing after ignition with a time constant of its own; noise of 0.1 % of peak and
 /// 10 s of quiet record after the burn. (With 4 s after and noise of 0.2 % the course cannot be told as well: up to 0.13 %, within the
 /// interval in 36 of 40. Warmth that comes with a time constant well below the burn's length leaves a zero that is level on both sides: when in
