@@ -227,6 +227,16 @@ fn read_record(inputs: &Inputs) -> Result<Record<'_>, Problem> {
             (event.level_before, event.level_after) = (-event.level_before, -event.level_after);
         }
     }
+    if let Some(mass) = run.motor.propellant_mass_kg.filter(|m| m.value * gravity.value_m_s2 > burn.peak.abs()) {
+        return Err(Problem::new(format!(
+            "the propellant's {} kg weigh {:.0} N, more than the whole thrust of {:.4} N",
+            mass.value,
+            mass.value * gravity.value_m_s2,
+            burn.peak.abs()
+        ))
+        .expected("a motor that lifts its own propellant many times over")
+        .remedy("check the unit of propellant_mass (g or kg) in run.toml, and the unit of the calibration's loads"));
+    }
     widen_to_overrides(inputs, &time_s, &mut burn);
     bursts::join_quiet(&mut segmentation, &burn);
     Ok(Record {

@@ -55,8 +55,8 @@ fn a_plain_log() {
     let log = log_of(&with_header(&plain(120)));
     assert_eq!(log.records.kept, 120);
     assert_eq!(log.time_s[0], 0.0);
-    // Stamps are cut to whole milliseconds.
-    assert!((log.time_s[100] - 1.25).abs() < 1e-9);
+    // Stamps are cut to whole milliseconds; a line through 120 of them is good to twice 0.29 ms/√120 at its ends.
+    assert!((log.time_s[100] - 1.25).abs() < 6e-5);
     assert!((log.interval_s - 0.0125).abs() < 1e-4, "{}", log.interval_s);
     assert_eq!(log.clock_resolution_s, 0.001);
     assert_eq!(log.columns.len(), 1);
@@ -276,7 +276,9 @@ fn one_misread_stamp_does_not_move_the_rest() {
         lines[50] = format!("{wrong},{}", reading(50));
         let log = log_of(&with_header(&lines));
         assert_eq!((log.records.read, log.records.repaired), (100, 1), "{wrong}");
-        assert_eq!(log.time_s.last(), reference.time_s.last());
+        // One stamp more or less on a line through a hundred rounded to 1 ms.
+        let last = |log: &Log| log.time_s.last().copied().unwrap_or(f64::NAN);
+        assert!((last(&log) - last(&reference)).abs() < 1e-5);
         assert!((log.time_s[50] - reference.time_s[50]).abs() < 0.001);
     }
 }
@@ -319,7 +321,8 @@ fn a_flipped_bit_in_any_stamp_leaves_the_others() {
                 // A flip of about one step makes two stamps alike; they are then spread by half a step.
                 let shared = if size < 2.0 * step { 0.5 * step * 1e-3 } else { 0.0 };
                 assert!(
-                    worst <= origin + first + shared + 1e-9,
+                    // A line through a hundred stamps rounded to 1 ms moves by a hundredth of that when one is not there.
+                    worst <= origin + first + shared + 5e-5,
                     "step {step} at {at} bit {bit}: {worst} {:?}",
                     log.repairs
                 );
@@ -421,7 +424,8 @@ fn readings_with_labels_before_them() {
         assert_eq!(log.columns.len(), 1, "{text}");
         assert_eq!(log.columns[0].name, "load");
         assert_eq!(log.columns[0].values[3], reading(3) as f64);
-        assert!((log.time_s[59] - 0.737).abs() < 1e-9);
+        // 59 steps of 12.5 ms, read off a line through sixty stamps cut to whole milliseconds.
+        assert!((log.time_s[59] - 0.7375).abs() < 1e-4, "{}", log.time_s[59]);
     }
 }
 

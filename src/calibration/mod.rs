@@ -7,6 +7,7 @@ mod file_points;
 mod fit;
 mod forms;
 mod noise;
+mod plausible;
 mod points;
 mod report;
 mod table;

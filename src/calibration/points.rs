@@ -3,6 +3,7 @@
 use super::degree::{self, Choice, Evidence};
 use super::fit::{self, Fit, monotonic_within, slope, unscale_matrix, value};
 use super::noise::noise_variance;
+use super::plausible;
 use super::report::{CalibrationPoint, CalibrationReport, quality};
 use super::weights::{self, Tolerance, WeightErrors, levels};
 use super::{Calibrated, Calibration, ErrorDirection, ErrorShape, ScaleSource};
@@ -59,6 +60,11 @@ impl Points {
 pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
     let forces_n: Vec<f64> = points.listed.iter().map(|point| points.force_n(point.load)).collect();
     let readings: Vec<f64> = points.listed.iter().map(|point| point.reading).collect();
+    if let Some(words) = plausible::beyond_belief(&forces_n, points.capacity_n, points.unit.dimension) {
+        return Err(Problem::new(words)
+            .expected("loads that the cell can carry")
+            .remedy("check the unit of the loads, and that load and reading of each point are not swapped"));
+    }
     let (distinct, _) = levels(&forces_n);
     let (Some(&low), Some(&high)) = (distinct.first(), distinct.last()) else {
         return Err(Problem::new("there are no points").expected("at least two loads with their readings"));
@@ -142,6 +148,17 @@ pub(super) fn calibrate(points: &Points) -> Result<Calibrated, Problem> {
             .push("too few loads to say how far the curve may bend beyond the heaviest weight".into()),
     }
     judge(points, &mut calibration, noise.is_some(), distinct.len());
+    let slips = &mut calibration.cautions;
+    slips.extend(plausible::of_capacity(&forces_n, points.capacity_n, calibration.measures.ucum()));
+    if let Some((at, share)) = plausible::odd_point(&forces_n, &readings) {
+        slips.push(format!(
+            "point {} (load {}, reading {}) lies {:.1} % of the span off the line through all others: mistyped?",
+            at + 1,
+            points.listed[at].load,
+            points.listed[at].reading,
+            100.0 * share
+        ));
+    }
     // scatter alone is an answer only where every weight errs on its own: then it shows in the scatter
     let known = noise.is_some() && !points.weight_errors_stated || points.tolerance.is_some();
     calibration.errors = known.then_some(errors);

@@ -422,7 +422,10 @@ fn fit_until(
     let length = (until_s - half_s) / period_s + 1.0;
     let mut fits: Vec<Fitted> = RISES.iter().flat_map(|rise| readings.fit_rise(*rise, length)).collect();
     let best = fits.iter().max_by(|a, b| a.evidence.total_cmp(&b.evidence))?;
-    if best.misfit > MOST_LEFT && best.misfit.sqrt() * readings.noise > LITTLE_LEFT {
+    // A model that must bend the stand to fit is none.
+    let bent = (best.parameters[3] * known.frequency_hz / known.frequency_u_hz)
+        .hypot((best.parameters[4] - known.damping_ratio) / known.damping_u);
+    if best.misfit > MOST_LEFT && (best.misfit.sqrt() * readings.noise > LITTLE_LEFT || bent > 1.0) {
         return None;
     }
     // Where even the best leaves more than the noise (a hum, glitches mended), evidence and errors count accordingly less.

@@ -152,10 +152,12 @@ mod tests {
     fn rises_start_at_nil_and_end_at_the_level() {
         for rise in RISES {
             for shape in [0.0, 0.5, 1.0] {
-                assert_eq!(risen(rise, shape, 0.0), 0.0);
+                let start = if rise == Rise::Soft { -0.5 * FOOT } else { 0.0 };
+                assert_eq!(risen(rise, shape, start), 0.0);
                 assert!((risen(rise, shape, 7.5) - 1.0).abs() < 1e-5, "{rise:?} {shape}");
             }
         }
+        assert!((risen(Rise::Soft, 0.0, 0.25) - 0.5).abs() < 1e-12);
         assert!((risen(Rise::Ramp, 0.0, 0.25) - 0.5).abs() < 1e-12);
         assert!((risen(Rise::Approach, 0.0, 0.5) - (1.0 - (-1f64).exp())).abs() < 1e-12);
     }

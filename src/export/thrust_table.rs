@@ -62,7 +62,9 @@ pub fn thrust_table(firing: &Firing, curves: &Curves, rows: usize) -> Result<Thr
     let impulse = trapezoid(time_s, curve_n);
     let peak = (0..curve_n.len()).max_by(|a, b| curve_n[*a].total_cmp(&curve_n[*b])).unwrap_or(0);
     if !(impulse > 0.0 && curve_n[peak] > 0.0) || peak == 0 || peak + 1 == curve_n.len() {
-        return Err(Problem::new("the thrust curve has no peak between its ends, or no positive impulse"));
+        return Err(Problem::new("the thrust curve has no peak between its ends, or no positive impulse")
+            .expected("thrust that rises, and falls again within the record")
+            .remedy("look at the record with `burntally inspect`; check calibration, orientation and propellant_mass, and [reduction]"));
     }
     let chosen = choose(time_s, curve_n, peak, rows);
     let thrust_n = keep_area(time_s, curve_n, &chosen, peak, impulse);

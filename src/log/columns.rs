@@ -103,6 +103,7 @@ pub fn find_time(
         time.given = true;
         time.counter = rate_hz.is_some() && given_unit.is_none() && time.unit.is_none();
         if let Some(unit) = given_unit {
+            agrees_with_log(layout, &time, &unit)?;
             time.unit = Some(unit);
             time.unit_source = "as given";
         }
@@ -135,6 +136,7 @@ pub fn find_time(
     }
     match (&mut best, given_unit) {
         (Some(time), Some(unit)) => {
+            agrees_with_log(layout, time, &unit)?;
             time.unit = Some(unit);
             time.unit_source = "as given";
         }
@@ -142,6 +144,24 @@ pub fn find_time(
         _ => {}
     }
     Ok(best)
+}
+
+/// The unit a person gives for the time, against what the log's own header or units row says.
+///
+/// # Errors
+/// They differ: one of the two makes every time, and every impulse, wrong by a round factor.
+fn agrees_with_log(layout: &Layout, time: &TimeColumn, given: &(String, f64)) -> Result<(), Problem> {
+    match &time.unit {
+        Some((symbol, factor)) if *factor != given.1 => Err(Problem::new(format!(
+            "run.toml gives the time in {}, the log says {symbol} ({}) for column `{}`",
+            given.0, time.unit_source, layout.header.names[time.index]
+        ))
+        .expected("one unit for the time")
+        .remedy(format!(
+            "write unit = \"{symbol}\" in [log] time, or leave the unit out; where the log itself is wrong, correct its header in a copy"
+        ))),
+        _ => Ok(()),
+    }
 }
 
 /// The refusal where no time can be had.

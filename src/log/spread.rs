@@ -132,6 +132,9 @@ fn spread_all(stamps: &[f64], places: &[f64], step: f64) -> Vec<f64> {
 /// Records in the shortest stretch that is put on a line.
 const SHORTEST_LINE: usize = 32;
 
+/// A stamp that was mended by its neighbours may lie off by more than rounding does.
+const MENDED: f64 = 1.3;
+
 /// An even sampler's stamps, rounded to a clock's ticks, put back on straight lines over the records' places, wherever all stamps of a stretch
 /// lie within a tick of one; how many were moved. `step`: mean step.
 pub fn straighten(stamps: &mut [f64], places: &[f64], tick: f64, step: f64) -> usize {
@@ -154,7 +157,7 @@ fn straighten_stretch(stamps: &mut [f64], places: &[f64], range: std::ops::Range
     if range.len() < SHORTEST_LINE {
         return 0;
     }
-    let Some(line) = straight(&stamps[range.clone()], &places[range.clone()], tick) else {
+    let Some(line) = straight(&stamps[range.clone()], &places[range.clone()], MENDED * tick) else {
         let middle = range.start + range.len() / 2;
         return straighten_stretch(stamps, places, range.start..middle, tick)
             + straighten_stretch(stamps, places, middle..range.end, tick);
@@ -215,8 +218,15 @@ pub fn clock_grid(time: &[f64], step: f64) -> f64 {
     if !repeats && even * 10 >= steps.len() * 9 && whole * 50 >= steps.len() * 49 {
         return 0.0;
     }
+    // A step that comes but twice, to and from one mended stamp, says nothing of the clock.
+    let rare = |k: usize| {
+        let alike = |other: usize| steps.get(other).is_some_and(|s| (s - steps[k]).abs() <= tolerance);
+        steps.len() >= 20
+            && !(alike(k.wrapping_sub(1)) && alike(k + 1) || alike(k.wrapping_sub(2)) && k >= 2 || alike(k + 2))
+    };
+    let common: Vec<f64> = (0..steps.len()).filter(|k| !rare(*k)).map(|k| steps[k]).collect();
     let mut grid = f64::INFINITY;
-    for pair in steps.windows(2) {
+    for pair in common.windows(2) {
         let difference = pair[1] - pair[0];
         if difference > tolerance {
             grid = grid.min(difference);

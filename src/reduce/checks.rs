@@ -32,6 +32,9 @@ mod limit {
     pub const SLOW_STAND_CYCLES: f64 = 10.0;
     /// Relative standard uncertainty of the force scale that is called poor.
     pub const SCALE: f64 = 0.005;
+    /// Specific impulse that no solid propellant exceeds on the ground, and none that burns as one falls short of, s (from memory).
+    pub const MOST_ISP_S: f64 = 330.0;
+    pub const LEAST_ISP_S: f64 = 20.0;
     /// Mass by weight shift against weighed mass, in standard uncertainties and as a share.
     pub const MASS_SIGMAS: f64 = 3.0;
     pub const MASS_FAIL: f64 = 0.15;
@@ -360,6 +363,17 @@ fn signal(c: &mut Checks, record: &Record<'_>, curve: &Curve, figures: &Figures)
 
 fn mass(c: &mut Checks, record: &Record<'_>, zero: &Zero, figures: &Figures) {
     let weighed = record.inputs.run.motor.propellant_mass_kg;
+    let isp_s = figures.quantities.specific_impulse.as_ref().map(|f| f.value);
+    if let Some(isp_s) = isp_s.filter(|s| !(limit::LEAST_ISP_S..limit::MOST_ISP_S).contains(s)) {
+        c.add(
+            "propellant_mass",
+            Status::Fail,
+            format!(
+                "a specific impulse of {isp_s:.0} s is none that a solid motor has (some 50 to 300 s): the unit of the time, of the force or of the propellant's mass is wrong, or the calibration is"
+            ),
+        );
+        return;
+    }
     match (weighed, zero.shift_mass_kg) {
         (Some(mass), Some((kg, u))) => {
             let off = kg - mass.value;

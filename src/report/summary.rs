@@ -3,7 +3,7 @@
 use super::advice;
 use super::figures::named;
 use super::units::{Units, fixed, percent, words};
-use crate::firing::{Estimate, Figure, Firing, Status};
+use crate::firing::{Check, Estimate, Figure, Firing, Status};
 use std::path::Path;
 
 /// How the summary is to look.
@@ -17,6 +17,16 @@ pub struct View {
 const WIDTH: usize = 80;
 /// Checks beyond this many that are only cautions are counted, so that the summary fits on a screen.
 const MOST_CAUTIONS: usize = 3;
+/// Cautions that put a figure as a whole in doubt come before those on the record's small blemishes.
+const TELLING: [&str; 7] = [
+    "propellant_mass",
+    "check_load",
+    "polarity",
+    "baseline_shift",
+    "ringing",
+    "calibration_range",
+    "calibration_quality",
+];
 /// With more cautions than this the advice on them is left to the page, for the same reason.
 const MOST_ADVISED: usize = 2;
 
@@ -197,8 +207,11 @@ fn checks(firing: &Firing, view: View, lines: &mut Vec<String>) {
     }
     lines.push(format!("checks: {passed} passed, {cautions} caution, {failed} failed"));
     let mut shown_cautions = 0;
+    let mut hidden = Vec::new();
     for status in [Status::Fail, Status::Caution] {
-        for check in firing.checks.iter().filter(|check| check.status == status) {
+        let mut checks: Vec<&Check> = firing.checks.iter().filter(|check| check.status == status).collect();
+        checks.sort_by_key(|check| !TELLING.contains(&check.id.as_str()));
+        for check in checks {
             let (word, tone) = match status {
                 Status::Fail => ("FAIL", Tone::Bad),
                 _ => ("caution", Tone::Caution),
@@ -206,6 +219,7 @@ fn checks(firing: &Firing, view: View, lines: &mut Vec<String>) {
             if status == Status::Caution {
                 shown_cautions += 1;
                 if shown_cautions > MOST_CAUTIONS {
+                    hidden.push(check.id.as_str());
                     continue;
                 }
             }
@@ -223,7 +237,8 @@ fn checks(firing: &Firing, view: View, lines: &mut Vec<String>) {
         }
     }
     if shown_cautions > MOST_CAUTIONS {
-        lines.push(format!("  and {} more cautions in report.html and result.json", shown_cautions - MOST_CAUTIONS));
+        let rest = format!("more in report.html and result.json: {}", hidden.join(", "));
+        lines.extend(wrapped(&rest, "  ", "          "));
     }
 }
 
