@@ -63,6 +63,33 @@ pub struct Quantities {
 
 impl Quantities {
     /// The figure of a key, where there is one.
+    pub fn by_key(&self, key: &str) -> Option<&Figure> {
+        match key {
+            "total_impulse" => &self.total_impulse,
+            "burn_impulse" => &self.burn_impulse,
+            "burn_time" => &self.burn_time,
+            "action_time" => &self.action_time,
+            "average_thrust" => &self.average_thrust,
+            "peak_thrust" => &self.peak_thrust,
+            "initial_thrust" => &self.initial_thrust,
+            "rise_time" => &self.rise_time,
+            "ignition_delay" => &self.ignition_delay,
+            "propellant_mass" => &self.propellant_mass,
+            "expelled_mass" => &self.expelled_mass,
+            "specific_impulse" => &self.specific_impulse,
+            "effective_exhaust_velocity" => &self.effective_exhaust_velocity,
+            "peak_pressure" => &self.peak_pressure,
+            "mean_pressure" => &self.mean_pressure,
+            "characteristic_velocity" => &self.characteristic_velocity,
+            "thrust_coefficient" => &self.thrust_coefficient,
+            "burn_rate" => &self.burn_rate,
+            "extrapolated_impulse" => &self.extrapolated_impulse,
+            _ => return None,
+        }
+        .as_ref()
+    }
+
+    /// The figure of a key, where there is one.
     pub fn by_key_mut(&mut self, key: &str) -> Option<&mut Figure> {
         match key {
             "total_impulse" => &mut self.total_impulse,

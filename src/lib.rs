@@ -26,6 +26,8 @@ pub mod uncertainty;
 pub mod reduce;
 /// What a run names, read into the inputs of its reduction.
 pub mod load;
+/// Several firings held against each other: spread, components, differences, odd ones, curves, trends.
+pub mod compare;
 /// Thrust table, JSON, files that appear whole or not at all.
 pub mod export;
 /// Summary text, plots, page.

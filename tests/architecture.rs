@@ -3,7 +3,7 @@
 use std::path::{Path, PathBuf};
 
 /// Modules in the order data flows. A module may use those before it.
-const FLOW: [&str; 15] = [
+const FLOW: [&str; 16] = [
     "problem",
     "quantity",
     "run",
@@ -16,6 +16,7 @@ const FLOW: [&str; 15] = [
     "uncertainty",
     "reduce",
     "load",
+    "compare",
     "export",
     "report",
     "cli",

@@ -1,6 +1,7 @@
 //! Quantiles and tail probabilities: the one place that knows the statistics library.
 
-use statrs::distribution::{ContinuousCDF, FisherSnedecor, Normal, StudentsT};
+use statrs::distribution::{ChiSquared, ContinuousCDF, FisherSnedecor, Normal, StudentsT};
+use statrs::function::gamma::ln_gamma;
 
 /// Probability that F with these degrees of freedom exceeds `statistic`; `None` where it is not defined.
 pub fn f_upper_tail(statistic: f64, numerator_dof: f64, denominator_dof: f64) -> Option<f64> {
@@ -43,6 +44,44 @@ pub fn normal_quantile(probability: f64) -> Option<f64> {
 /// Standard normal distribution function.
 pub fn normal_cdf(value: f64) -> f64 {
     if value.is_nan() { f64::NAN } else { Normal::standard().cdf(value) }
+}
+
+/// Standard normal density.
+pub fn normal_density(value: f64) -> f64 {
+    (-0.5 * value * value).exp() / (2.0 * std::f64::consts::PI).sqrt()
+}
+
+/// Probability that |t| with these degrees of freedom exceeds |`statistic`|; `None` where it is not defined.
+pub fn t_both_tails(statistic: f64, dof: f64) -> Option<f64> {
+    f_upper_tail(statistic * statistic, 1.0, dof)
+}
+
+/// Probability that chi-squared exceeds `value`; `None` without degrees of freedom.
+pub fn chi_squared_upper_tail(value: f64, dof: f64) -> Option<f64> {
+    if value.is_nan() {
+        return None;
+    }
+    Some(ChiSquared::new(dof).ok()?.sf(value.max(0.0)))
+}
+
+/// Chi-squared: the value the variable stays below with this probability.
+pub fn chi_squared_quantile(probability: f64, dof: f64) -> Option<f64> {
+    if !(probability > 0.0 && probability < 1.0) {
+        return None;
+    }
+    Some(ChiSquared::new(dof).ok()?.inverse_cdf(probability))
+}
+
+/// Density of χ/√ν, the ratio of a sample's standard deviation to the true one with `dof` degrees of freedom.
+///
+/// # Formula
+/// f(s) = 2 (ν/2)^(ν/2) / Γ(ν/2) s^(ν−1) exp(−ν s²/2)
+pub fn scale_density(s: f64, dof: f64) -> f64 {
+    if s <= 0.0 {
+        return 0.0;
+    }
+    let half = 0.5 * dof;
+    (std::f64::consts::LN_2 + half * half.ln() - ln_gamma(half) + (dof - 1.0) * s.ln() - half * s * s).exp()
 }
 
 #[cfg(test)]
