@@ -21,6 +21,11 @@ pub enum Command {
         after_help = "Exit status: 0 done, 1 refused (that run wrote nothing), 2 wrong usage, 3 done but a check failed."
     )]
     Reduce(ReduceArguments),
+    /// Hold reduced firings against each other: spread, differences, odd ones, the next motor
+    #[command(
+        after_help = "Exit status: 0 done, 1 refused (nothing written), 2 wrong usage, 3 done but a run was set aside."
+    )]
+    Compare(CompareArguments),
     /// Fit a load cell's calibration and draw its residuals
     Calibrate(CalibrateArguments),
     /// Say what is in a log; writes nothing
@@ -82,6 +87,41 @@ pub struct ReduceArguments {
     pub table_rows: u32,
     #[command(flatten)]
     pub common: Common,
+}
+
+#[derive(Debug, Args)]
+pub struct CompareArguments {
+    /// A reduced run's folder, its result.json, or a folder of such
+    #[arg(required = true, value_name = "RESULT")]
+    pub results: Vec<PathBuf>,
+    /// Folder for the comparison
+    #[arg(long, value_name = "DIR", default_value = "comparison")]
+    pub out: PathBuf,
+    /// What makes a group: pour, date, tags.NAME or conditions.NAME
+    #[arg(long, value_name = "KEY", default_value = "pour")]
+    pub by: String,
+    /// Leave this run out; it is said in the result
+    #[arg(long, value_name = "ID")]
+    pub leave_out: Vec<String>,
+    /// Margin within which two groups count as alike, % of the mean
+    #[arg(long, value_name = "PERCENT", default_value_t = 5.0, value_parser = positive)]
+    pub alike: f64,
+    /// Average runs that failed a check, too
+    #[arg(long)]
+    pub with_failed: bool,
+    /// Compare curves at equal shares of the burn time
+    #[arg(long)]
+    pub by_burn_time: bool,
+    /// Numbers and tables only: no picture
+    #[arg(long)]
+    pub no_pictures: bool,
+    #[command(flatten)]
+    pub common: Common,
+}
+
+fn positive(text: &str) -> Result<f64, String> {
+    let number: f64 = text.trim_end_matches('%').trim().parse().map_err(|_| format!("{text:?} is not a number"))?;
+    if number.is_finite() && number > 0.0 { Ok(number) } else { Err("it must be above nil".into()) }
 }
 
 #[derive(Debug, Args)]

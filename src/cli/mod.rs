@@ -2,6 +2,7 @@
 
 mod args;
 mod calibrate;
+mod compare;
 mod console;
 mod inputs;
 mod inspect;
@@ -28,6 +29,7 @@ pub fn main() -> ExitCode {
     };
     match arguments.command {
         Command::Reduce(arguments) => reduce::run(&arguments),
+        Command::Compare(arguments) => compare::run(&arguments),
         Command::Calibrate(arguments) => calibrate::run(&arguments),
         Command::Inspect(arguments) => inspect::run(&arguments),
         Command::New(arguments) => new::run(&arguments),

@@ -9,6 +9,7 @@ use super::{
 };
 use crate::firing::{Figure, Firing};
 use crate::problem::Problem;
+use rayon::prelude::*;
 use std::collections::BTreeMap;
 
 /// Sources of error that all firings on one calibrated cell, stand and site share.
@@ -24,6 +25,9 @@ const SHARED: [&str; 10] = [
     "pressure scale",
     "throat diameter",
 ];
+
+/// Standard uncertainties of its own measurement that a value must lie off the mean to be odd.
+const BEYOND_MEASUREMENT: f64 = 2.0;
 
 /// The figure of a key.
 pub fn figure_of<'a>(firing: &'a Firing, key: &str) -> Option<&'a Figure> {
@@ -174,8 +178,9 @@ pub fn describe(name: &str, members: &[Member<'_>], by_burn_time: bool) -> Group
     let aligned = aligned(&traces, by_burn_time);
     let refs: Vec<&Trace> = aligned.iter().collect();
     let mut quantities = BTreeMap::new();
+    let mut factors = Vec::new();
     for (key, _) in FIGURES {
-        if let Some(spread) = spread(members, key, &traces) {
+        if let Some(spread) = spread(members, key, &traces, &mut factors) {
             quantities.insert(key.to_string(), spread);
         }
     }
@@ -197,7 +202,24 @@ pub fn describe(name: &str, members: &[Member<'_>], by_burn_time: bool) -> Group
     }
 }
 
-fn spread(members: &[Member<'_>], key: &str, traces: &[(&str, &Trace)]) -> Option<Spread> {
+/// Tolerance factors of a count of firings, two-sided and one-sided.
+struct Factors {
+    n: usize,
+    two: Option<f64>,
+    one: Option<f64>,
+}
+
+impl Factors {
+    fn of(n: usize) -> Self {
+        Factors {
+            n,
+            two: tolerance::two_sided(n, tolerance::CONTENT, tolerance::CONFIDENCE),
+            one: tolerance::one_sided(n, tolerance::CONTENT, tolerance::CONFIDENCE),
+        }
+    }
+}
+
+fn spread(members: &[Member<'_>], key: &str, traces: &[(&str, &Trace)], known: &mut Vec<Factors>) -> Option<Spread> {
     let counted: Vec<(&Member<'_>, &Figure)> = members.iter().filter_map(|m| Some((m, m.counted(key)?))).collect();
     let values: Vec<f64> = counted.iter().map(|c| c.1.value).collect();
     let (mean, sd) = mean_and_sd(&values)?;
@@ -206,10 +228,17 @@ fn spread(members: &[Member<'_>], key: &str, traces: &[(&str, &Trace)]) -> Optio
     let measurement_sd = errors.as_ref().map(|e| (e.iter().map(|e| e.0 * e.0).sum::<f64>() / n as f64).sqrt());
     let shared_u = shared_error(members, key).map(|shared| shared.values().map(|u| u * u).sum::<f64>().sqrt());
     let around = |half: f64| [mean - half, mean + half];
-    let factor = tolerance::two_sided(n, tolerance::CONTENT, tolerance::CONFIDENCE);
-    let one = tolerance::one_sided(n, tolerance::CONTENT, tolerance::CONFIDENCE);
+    if !known.iter().any(|f| f.n == n) {
+        known.push(Factors::of(n));
+    }
+    let (factor, one) = known.iter().find(|f| f.n == n).map_or((None, None), |f| (f.two, f.one));
     let odd: Vec<OddValue> = outliers::find(&values)
         .into_iter()
+        // What its own measurement may be off by makes no firing odd.
+        .filter(|o| {
+            let own = errors.as_ref().map_or(0.0, |e| e[o.index].0);
+            (values[o.index] - mean).abs() > BEYOND_MEASUREMENT * own
+        })
         .map(|o| OddValue {
             id: counted[o.index].0.id.to_string(),
             value: values[o.index],
@@ -340,15 +369,14 @@ pub fn curve_differences(groups: &[(String, Vec<Member<'_>>)], by_burn_time: boo
             (name.as_str(), &sampled[from - count..from])
         })
         .collect();
-    let mut found = Vec::new();
-    for (i, a) in parts.iter().enumerate() {
-        for b in &parts[i + 1..] {
-            if let Some(test) = permutation::compare(&time_s, a.1, b.1) {
-                found.push(CurveDifference { a: a.0.to_string(), b: b.0.to_string(), test });
-            }
-        }
-    }
-    found
+    let pairs: Vec<(usize, usize)> = (0..parts.len()).flat_map(|a| (a + 1..parts.len()).map(move |b| (a, b))).collect();
+    pairs
+        .par_iter()
+        .filter_map(|(a, b)| {
+            let test = permutation::compare(&time_s, parts[*a].1, parts[*b].1)?;
+            Some(CurveDifference { a: parts[*a].0.to_string(), b: parts[*b].0.to_string(), test })
+        })
+        .collect()
 }
 
 /// A number of the run that figures may run with.

@@ -69,9 +69,14 @@ pub fn generalised_esd(values: &[f64], most: usize, level: f64) -> Vec<Odd> {
     steps
 }
 
+/// Fewer values hold no odd one: of three, the test only sees whether two lie close together.
+const FEWEST: usize = 4;
+
 /// The odd values of a group, by the test that suits its size.
 pub fn find(values: &[f64]) -> Vec<Odd> {
-    if values.len() >= SEVERAL_FROM {
+    if values.len() < FEWEST {
+        Vec::new()
+    } else if values.len() >= SEVERAL_FROM {
         generalised_esd(values, values.len() / 5, LEVEL)
     } else {
         grubbs(values, LEVEL).into_iter().collect()

@@ -5,7 +5,7 @@ use serde::{Deserialize, Serialize};
 /// Chance of a false alarm along the whole burn.
 pub const LEVEL: f64 = 0.05;
 /// All splits are tried up to so many, else so many drawn at random.
-const MOST_SPLITS: usize = 10_000;
+const MOST_SPLITS: usize = 2_000;
 const SEED: u64 = 20_261_201;
 /// Least spread that a difference is held against, as a share of the highest mean: where all motors are alike to the digit nothing is to be
 /// made of it.
@@ -24,22 +24,38 @@ pub struct CurveTest {
     pub differ: Vec<[f64; 3]>,
 }
 
-/// Largest standardised difference of the two groups along the curve. `first` marks members of the first group.
-fn course(curves: &[&[f64]], first: &[bool], floor: f64) -> Vec<f64> {
-    let (n1, n2) = (first.iter().filter(|f| **f).count() as f64, first.iter().filter(|f| !**f).count() as f64);
-    let points = curves.first().map_or(0, |c| c.len());
-    (0..points)
-        .map(|i| {
-            let (mut s1, mut s2, mut squares) = (0.0, 0.0, 0.0);
-            for (curve, is_first) in curves.iter().zip(first) {
-                let v = curve[i];
-                squares += v * v;
-                if *is_first { s1 += v } else { s2 += v }
-            }
-            let within = (squares - s1 * s1 / n1 - s2 * s2 / n2).max(0.0) / (n1 + n2 - 2.0);
-            (s1 / n1 - s2 / n2) / ((within + floor * floor) * (1.0 / n1 + 1.0 / n2)).sqrt()
-        })
-        .collect()
+/// What no split changes: sums and sums of squares at each point.
+struct Whole<'a> {
+    curves: &'a [&'a [f64]],
+    sum: Vec<f64>,
+    squares: Vec<f64>,
+    floor: f64,
+}
+
+impl<'a> Whole<'a> {
+    fn new(curves: &'a [&'a [f64]], floor: f64) -> Self {
+        let points = curves.first().map_or(0, |c| c.len());
+        let total = |f: fn(f64) -> f64| (0..points).map(|i| curves.iter().map(|c| f(c[i])).sum()).collect();
+        Whole { curves, sum: total(|v| v), squares: total(|v| v * v), floor }
+    }
+
+    /// Standardised difference of two groups along the curve; `first` marks members of the first.
+    fn course(&self, first: &[bool]) -> Vec<f64> {
+        let n1 = first.iter().filter(|f| **f).count() as f64;
+        let n2 = first.len() as f64 - n1;
+        let mut own = vec![0.0; self.sum.len()];
+        for (curve, _) in self.curves.iter().zip(first).filter(|(_, first)| **first) {
+            own.iter_mut().zip(*curve).for_each(|(o, v)| *o += v);
+        }
+        own.iter()
+            .zip(self.sum.iter().zip(&self.squares))
+            .map(|(s1, (sum, squares))| {
+                let s2 = sum - s1;
+                let within = (squares - s1 * s1 / n1 - s2 * s2 / n2).max(0.0) / (n1 + n2 - 2.0);
+                (s1 / n1 - s2 / n2) / ((within + self.floor * self.floor) * (1.0 / n1 + 1.0 / n2)).sqrt()
+            })
+            .collect()
+    }
 }
 
 fn largest(values: &[f64]) -> f64 {
@@ -69,12 +85,13 @@ pub fn compare(time_s: &[f64], a: &[Vec<f64>], b: &[Vec<f64>]) -> Option<CurveTe
     let highest = curves.iter().flat_map(|c| c.iter()).fold(0.0_f64, |h, v| h.max(v.abs()));
     let floor = LEAST_SPREAD * highest;
     let own: Vec<bool> = (0..n).map(|i| i < k).collect();
-    let seen = course(&curves, &own, floor);
+    let whole = Whole::new(&curves, floor);
+    let seen = whole.course(&own);
     let statistic = largest(&seen);
     let all = ways(n, k);
     let mut found: Vec<f64> = Vec::new();
     if all <= MOST_SPLITS {
-        each_split(n, k, &mut |first| found.push(largest(&course(&curves, first, floor))));
+        each_split(n, k, &mut |first| found.push(largest(&whole.course(first))));
     } else {
         use rand::SeedableRng;
         use rand::seq::SliceRandom;
@@ -83,7 +100,7 @@ pub fn compare(time_s: &[f64], a: &[Vec<f64>], b: &[Vec<f64>]) -> Option<CurveTe
         found.push(statistic);
         for _ in 1..MOST_SPLITS {
             first.shuffle(&mut random);
-            found.push(largest(&course(&curves, &first, floor)));
+            found.push(largest(&whole.course(&first)));
         }
     }
     let splits = found.len();

@@ -1,8 +1,10 @@
 //! Thrust table, JSON, files that appear whole or not at all.
 
+pub mod comparison;
 pub mod files;
 pub mod json;
 pub mod thrust_table;
+pub mod thrust_table_read;
 
 #[cfg(test)]
 pub(crate) mod sample;

@@ -1,6 +1,8 @@
 //! Summary text, plots, page.
 
 pub mod advice;
+pub mod comparison_plot;
+pub mod comparison_summary;
 pub mod figures;
 pub mod outputs;
 pub mod page;
