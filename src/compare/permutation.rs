@@ -2,8 +2,10 @@
 
 use serde::{Deserialize, Serialize};
 
-/// Chance of a false alarm along the whole burn.
+/// Chance of a false alarm along the whole burn. Few motors can be split in few ways only: then the nearest chance that can be had is taken,
+/// up to the second number, or the test says nothing.
 pub const LEVEL: f64 = 0.05;
+const MOST_LEVEL: f64 = 0.06;
 /// All splits are tried up to so many, else so many drawn at random.
 const MOST_SPLITS: usize = 2_000;
 const SEED: u64 = 20_261_201;
@@ -19,6 +21,8 @@ pub struct CurveTest {
     /// What it exceeds by chance once in twenty; null where so few splits exist that no difference could be told.
     pub critical: Option<f64>,
     pub p_value: f64,
+    /// Chance of a false alarm anywhere along the burn.
+    pub level: Option<f64>,
     pub splits: usize,
     /// Stretches of the common time in which the curves differ: start, end, s, and mean difference, N.
     pub differ: Vec<[f64; 3]>,
@@ -106,12 +110,18 @@ pub fn compare(time_s: &[f64], a: &[Vec<f64>], b: &[Vec<f64>]) -> Option<CurveTe
     let splits = found.len();
     let alike = found.iter().filter(|v| **v >= statistic * (1.0 - 1e-9)).count();
     found.sort_unstable_by(|x, y| y.total_cmp(x));
-    // Larger than all but one in twenty of the splits. A split and its mirror image give the same where the groups are of one size.
-    let allowed = (LEVEL * splits as f64 + 1e-9) as usize;
-    let least = found.iter().filter(|v| **v >= found[0] * (1.0 - 1e-9)).count();
-    let critical = (allowed >= least).then(|| found[allowed.min(splits - 1)]);
+    // A split and its mirror image give the same where the groups are of one size.
+    let step = found.iter().filter(|v| **v >= found[0] * (1.0 - 1e-9)).count();
+    let count = |steps: f64| (steps * step as f64) as usize;
+    let nearest = (LEVEL * splits as f64 / step as f64).round();
+    let allowed = [nearest, nearest - 1.0]
+        .map(|steps| count(steps.max(0.0)))
+        .into_iter()
+        .find(|n| *n > 0 && *n as f64 <= MOST_LEVEL * splits as f64);
+    let critical = allowed.map(|n| found[n.min(splits - 1)]);
+    let level = allowed.map(|n| n as f64 / splits as f64);
     let differ = critical.map_or_else(Vec::new, |limit| stretches(time_s, &seen, limit, &curves, k));
-    Some(CurveTest { statistic, critical, p_value: alike as f64 / splits as f64, splits, differ })
+    Some(CurveTest { statistic, critical, p_value: alike as f64 / splits as f64, level, splits, differ })
 }
 
 /// Calls `use_it` with every way to take `k` of `n`.

@@ -21,12 +21,11 @@ pub fn squares_about(values: &[f64], centre: f64) -> f64 {
 /// A mean with the errors that all its values share: half-width of the 95 % interval.
 ///
 /// # Formula
-/// u² = s²/n + u_s², with (s²/n + u_s²)² / ((s²/n)²/(n − 1)) degrees of freedom (JCGM 100:2008 G.4.1); the shared part is taken as known.
+/// √((t s/√n)² + (1.96 u_s)²), t of n − 1 degrees of freedom. (One t of effective degrees of freedom, JCGM 100:2008 G.4.1, would make the
+/// interval narrower when an error is added, since the shared part is taken as known.)
 pub fn half_width_95(sd: f64, n: usize, shared_u: f64) -> Option<f64> {
-    let (own, shared) = (sd * sd / n as f64, shared_u * shared_u);
-    let total = own + shared;
-    let dof = if own > 0.0 { total * total / (own * own / (n as f64 - 1.0)) } else { f64::INFINITY };
-    Some(statistics::t_two_sided(0.95, dof)? * total.sqrt())
+    let own = if sd > 0.0 { statistics::t_two_sided(0.95, n as f64 - 1.0)? * sd / (n as f64).sqrt() } else { 0.0 };
+    Some(own.hypot(statistics::t_two_sided(0.95, f64::INFINITY)? * shared_u))
 }
 
 #[cfg(test)]
