@@ -95,6 +95,9 @@ fn pours_of_the_sample_runs() {
     let area: f64 = (1..t.len()).map(|i| 0.5 * (t[i] - t[i - 1]) * (f[i] + f[i - 1])).sum();
     let mean = number(&bw2["quantities"]["total_impulse"]["mean"]);
     assert!((area / mean - 1.0).abs() < 0.003, "{area} {mean}");
+    let trend = c["trends"].as_array().expect("trends").iter().find(|t| t["quantity"] == "total_impulse").expect("one");
+    assert!(trend["n"] == 11 && trend["against"].as_str().is_some_and(|a| a.starts_with("date")), "{trend}");
+    assert_eq!(c["burn_rate_law"], Value::Null);
     for name in ["comparison.csv", "thrust-bands.csv", "comparison.svg", "comparison.png"] {
         assert!(dir.path().join(name).is_file(), "{name}");
     }

@@ -3,7 +3,7 @@
 use super::summary::{View, plain, wrapped};
 use super::units::{fixed, significant};
 use crate::compare::pairwise::Alike;
-use crate::compare::{Comparison, Spread};
+use crate::compare::{Comparison, Group, OddValue, Spread};
 
 /// Figures of the row, with their heading.
 const COLUMNS: [(&str, &str); 5] = [
@@ -36,6 +36,7 @@ pub fn summary(c: &Comparison, view: View, written: &str) -> String {
     lines.push(String::new());
     lines.extend(differences(c, view));
     lines.extend(next_motor(c, view));
+    lines.extend(trends(c, view));
     lines.extend(attention(c));
     lines.push(String::new());
     lines.extend(wrapped(written, "", "  "));
@@ -109,8 +110,10 @@ fn differences(c: &Comparison, view: View) -> Vec<String> {
         let unit = view.units.of(&between.unit, 1.0);
         let spread = c.variance_components.get(key).map_or(String::new(), |v| {
             format!(
-                "; within a group {}, between groups {} {}",
+                "; within a group {}{}, between groups {} {}",
                 significant(v.repeatability_sd / unit.size_si, 2),
+                measuring(c, key)
+                    .map_or(String::new(), |u| format!(" (measuring alone {})", significant(u / unit.size_si, 2))),
                 significant(v.between_pour_sd / unit.size_si, 2),
                 unit.symbol
             )
@@ -160,6 +163,14 @@ fn differences(c: &Comparison, view: View) -> Vec<String> {
     lines
 }
 
+/// Spread that measuring alone makes within a group, in the figure's unit.
+fn measuring(c: &Comparison, key: &str) -> Option<f64> {
+    let all: Option<Vec<f64>> =
+        c.groups.iter().filter_map(|g| g.quantities.get(key)).map(|s| s.measurement_sd).collect();
+    let all = all.filter(|a| !a.is_empty())?;
+    Some((all.iter().map(|u| u * u).sum::<f64>() / all.len() as f64).sqrt())
+}
+
 /// A probability to two digits, or that it is smaller than can be told.
 fn probability(p: f64) -> String {
     if p < 1e-4 { "below 0.0001".into() } else { significant(p, 2) }
@@ -198,6 +209,78 @@ fn next_motor(c: &Comparison, view: View) -> Vec<String> {
     lines
 }
 
+/// One line a firing, with the figure it is oddest in first.
+fn odd_firings(group: &Group) -> Vec<String> {
+    let mut found: Vec<(&str, &OddValue)> =
+        group.quantities.iter().flat_map(|(key, s)| s.odd.iter().map(|o| (key.as_str(), o))).collect();
+    found.sort_by(|a, b| (b.1.statistic / b.1.critical).total_cmp(&(a.1.statistic / a.1.critical)));
+    let mut lines = Vec::new();
+    let mut told: Vec<&str> = Vec::new();
+    for (key, odd) in &found {
+        if told.contains(&odd.id.as_str()) {
+            continue;
+        }
+        told.push(&odd.id);
+        let others: Vec<String> = found
+            .iter()
+            .filter(|(other, o)| o.id == odd.id && other != key)
+            .map(|(other, _)| other.replace('_', " "))
+            .collect();
+        let besides = if others.is_empty() { String::new() } else { format!(", and in {}", others.join(", ")) };
+        let place = odd.most_off.map_or(String::new(), |[t, off]| {
+            format!("; its thrust is most off {} s into the burn, by {} N", significant(t, 3), significant(off, 3))
+        });
+        let text = format!(
+            "odd in {}: {} by {} ({} test, {} over {}){besides}{place}",
+            plain(&group.pour),
+            plain(&odd.id),
+            key.replace('_', " "),
+            odd.test,
+            significant(odd.statistic, 3),
+            significant(odd.critical, 3)
+        );
+        lines.extend(wrapped(&text, "  ", "    "));
+    }
+    lines
+}
+
+/// Trends told are those that chance makes but once in a hundred.
+const TOLD_TREND: f64 = 0.01;
+
+fn trends(c: &Comparison, view: View) -> Vec<String> {
+    let mut lines = Vec::new();
+    for trend in c.trends.iter().filter(|t| t.line.p_value < TOLD_TREND) {
+        let unit = view.units.of(&trend.unit, 1.0);
+        let [low, high] = trend.line.slope_interval_95.map(|v| significant(v / unit.size_si, 2));
+        let text = format!(
+            "{} runs with {}: {} ({low} to {high}) {} per unit of it over {} firings, p {}; groups differ in more than that",
+            trend.quantity.replace('_', " "),
+            plain(&trend.against),
+            significant(trend.line.slope / unit.size_si, 2),
+            unit.symbol,
+            trend.line.n,
+            probability(trend.line.p_value)
+        );
+        lines.extend(wrapped(&text, "  ", "    "));
+    }
+    if let Some(law) = &c.burn_rate_law {
+        let text = format!(
+            "burn rate r = a pⁿ over {} firings from {} to {} MPa: n {} ({} to {}), a {} ({} to {}) mm/s at 1 MPa",
+            law.firings,
+            significant(law.range_mpa[0], 3),
+            significant(law.range_mpa[1], 3),
+            significant(law.exponent, 3),
+            significant(law.exponent_interval_95[0], 3),
+            significant(law.exponent_interval_95[1], 3),
+            significant(law.coefficient_mm_s, 3),
+            significant(law.coefficient_interval_95[0], 3),
+            significant(law.coefficient_interval_95[1], 3)
+        );
+        lines.extend(wrapped(&text, "  ", "    "));
+    }
+    lines
+}
+
 fn attention(c: &Comparison) -> Vec<String> {
     let mut lines = vec![String::new()];
     for group in &c.groups {
@@ -208,27 +291,7 @@ fn attention(c: &Comparison) -> Vec<String> {
                 "    ",
             ));
         }
-        for (key, s) in &group.quantities {
-            for odd in &s.odd {
-                let place = odd.most_off.map_or(String::new(), |[t, off]| {
-                    format!(
-                        "; its thrust is most off {} s into the burn, by {} N",
-                        significant(t, 3),
-                        significant(off, 3)
-                    )
-                });
-                let text = format!(
-                    "odd in {}: {} by {} ({} test, {} over {}){place}",
-                    plain(&group.pour),
-                    plain(&odd.id),
-                    key.replace('_', " "),
-                    odd.test,
-                    significant(odd.statistic, 3),
-                    significant(odd.critical, 3)
-                );
-                lines.extend(wrapped(&text, "  ", "    "));
-            }
-        }
+        lines.extend(odd_firings(group));
     }
     for d in c.curve_differences.iter().filter(|d| !d.test.differ.is_empty()) {
         let stretches: Vec<String> = d
@@ -239,7 +302,12 @@ fn attention(c: &Comparison) -> Vec<String> {
                 format!("{} to {} s by {} N", significant(*from, 3), significant(*to, 3), significant(*off, 3))
             })
             .collect();
-        let text = format!("thrust of {} and {} differs: {}", plain(&d.a), plain(&d.b), stretches.join(", "));
+        let text = format!(
+            "thrust of {} and {} differs: {} (of alike pairs one in twenty does so by chance)",
+            plain(&d.a),
+            plain(&d.b),
+            stretches.join(", ")
+        );
         lines.extend(wrapped(&text, "  ", "    "));
     }
     for criterion in c.criteria.iter().filter(|k| !k.met) {
