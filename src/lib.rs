@@ -28,6 +28,8 @@ pub mod reduce;
 pub mod load;
 /// Several firings held against each other: spread, components, differences, odd ones, curves, trends.
 pub mod compare;
+/// The check before a flight: rail, thrust-to-weight, stability.
+pub mod preflight;
 /// Thrust table, JSON, files that appear whole or not at all.
 pub mod export;
 /// Summary text, plots, page.

@@ -3,7 +3,7 @@
 use std::path::{Path, PathBuf};
 
 /// Modules in the order data flows. A module may use those before it.
-const FLOW: [&str; 16] = [
+const FLOW: [&str; 17] = [
     "problem",
     "quantity",
     "run",
@@ -17,6 +17,7 @@ const FLOW: [&str; 16] = [
     "reduce",
     "load",
     "compare",
+    "preflight",
     "export",
     "report",
     "cli",

@@ -152,6 +152,11 @@ fn grouping_leaving_out_and_taking_in() {
     assert_eq!(bw2["total_impulse"]["n"], 2);
     assert_eq!(bw2["total_impulse"]["set_aside"][0]["reason"], "lower bound only");
     assert_eq!(bw2["burn_time"]["n"], 3);
+    assert!(
+        all["findings"].to_string().contains("BW2-2 is averaged although it failed clipping"),
+        "{}",
+        all["findings"]
+    );
 }
 
 #[test]

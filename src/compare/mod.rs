@@ -228,6 +228,11 @@ pub fn compare(runs: &[Run], request: &Request) -> Result<Comparison, Problem> {
     units_agree(&kept)?;
     let mut findings: Vec<String> =
         request.leave_out.iter().map(|id| format!("{id} left out by --leave-out: it counts nowhere")).collect();
+    if request.with_failed {
+        findings.extend(kept.iter().filter(|r| !failed_checks(&r.firing).is_empty()).map(|r| {
+            format!("{} is averaged although it failed {}", r.firing.run.id, failed_checks(&r.firing).join(", "))
+        }));
+    }
     let grouped = group::by_key(&kept, &request.by, &mut findings)?;
     let members: Vec<(String, Vec<Member<'_>>)> = grouped
         .into_iter()
@@ -287,6 +292,7 @@ fn units_agree(runs: &[&Run]) -> Result<(), Problem> {
 /// Whether anything asks for attention: an odd firing, a run set aside.
 pub fn needs_attention(comparison: &Comparison) -> bool {
     comparison.groups.iter().any(|g| !g.set_aside.is_empty())
+        || comparison.findings.iter().any(|f| f.contains("although it failed"))
 }
 
 /// Ids of the checks that failed.
