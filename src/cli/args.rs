@@ -26,6 +26,11 @@ pub enum Command {
         after_help = "Exit status: 0 done, 1 refused (nothing written), 2 wrong usage, 3 done but a run was set aside."
     )]
     Compare(CompareArguments),
+    /// Check rail, thrust-to-weight and stability of a vehicle with a measured thrust
+    #[command(
+        after_help = "Exit status: 0 go by its limits, 1 refused (nothing written), 2 wrong usage, 3 a limit is not met.\n\nA go says that the limits named were met on paper, and nothing more. Local law and the range's safety code rule."
+    )]
+    Preflight(PreflightArguments),
     /// Fit a load cell's calibration and draw its residuals
     Calibrate(CalibrateArguments),
     /// Say what is in a log; writes nothing
@@ -113,6 +118,30 @@ pub struct CompareArguments {
     #[arg(long)]
     pub by_burn_time: bool,
     /// Numbers and tables only: no picture
+    #[arg(long)]
+    pub no_pictures: bool,
+    #[command(flatten)]
+    pub common: Common,
+}
+
+#[derive(Debug, Args)]
+pub struct PreflightArguments {
+    /// The vehicle
+    #[arg(value_name = "VEHICLE.toml")]
+    pub vehicle: PathBuf,
+    /// Measured thrust: a reduced run's folder, a thrust-table.csv, a plain CSV (seconds, newtons), or a comparison's folder
+    #[arg(long, value_name = "SOURCE")]
+    pub thrust: Option<PathBuf>,
+    /// Group of a comparison
+    #[arg(long, value_name = "NAME")]
+    pub pour: Option<String>,
+    /// A constant thrust beside the measured one, or instead, such as "150 N"
+    #[arg(long, value_name = "THRUST")]
+    pub assumed: Option<String>,
+    /// Folder for the check
+    #[arg(long, value_name = "DIR", default_value = "preflight")]
+    pub out: PathBuf,
+    /// Numbers only: no picture
     #[arg(long)]
     pub no_pictures: bool,
     #[command(flatten)]

@@ -7,6 +7,7 @@ mod console;
 mod inputs;
 mod inspect;
 mod new;
+mod preflight;
 mod progress;
 mod reduce;
 mod run_template;
@@ -30,6 +31,7 @@ pub fn main() -> ExitCode {
     match arguments.command {
         Command::Reduce(arguments) => reduce::run(&arguments),
         Command::Compare(arguments) => compare::run(&arguments),
+        Command::Preflight(arguments) => preflight::run(&arguments),
         Command::Calibrate(arguments) => calibrate::run(&arguments),
         Command::Inspect(arguments) => inspect::run(&arguments),
         Command::New(arguments) => new::run(&arguments),

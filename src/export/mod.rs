@@ -5,6 +5,7 @@ pub mod files;
 pub mod json;
 pub mod thrust_table;
 pub mod thrust_table_read;
+pub mod two_columns;
 
 #[cfg(test)]
 pub(crate) mod sample;

@@ -7,6 +7,8 @@ pub mod figures;
 pub mod outputs;
 pub mod page;
 pub mod plot;
+pub mod preflight_plot;
+pub mod preflight_summary;
 pub mod residuals;
 pub mod summary;
 pub mod units;
