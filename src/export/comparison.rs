@@ -31,12 +31,25 @@ pub fn line(comparison: &Comparison) -> Result<String, Problem> {
 /// # Errors
 /// Text that is no comparison; line and column set.
 pub fn read(text: &str) -> Result<Comparison, Problem> {
-    serde_json::from_str(text).map_err(|error| {
+    let again = "run `burntally compare` again to write it anew";
+    let found: Comparison = serde_json::from_str(text).map_err(|error| {
         Problem::new(format!("this is no comparison: {error}"))
             .at_line(error.line() as u64)
             .at_column(error.column() as u64)
-            .remedy("run `burntally compare` again to write it anew")
-    })
+            .remedy(again)
+    })?;
+    for group in &found.groups {
+        let Some(band) = &group.thrust_band else { continue };
+        let n = band.time_s.len();
+        let lists = [&band.lower_n, &band.upper_n, &band.standard_deviation_n];
+        let whole = band.mean_n.len() == n && lists.iter().all(|l| l.is_empty() || l.len() == n);
+        if !whole || band.time_s.windows(2).any(|t| t[0] >= t[1]) {
+            return Err(Problem::new(format!("the thrust band of {:?} is damaged", group.pour))
+                .expected("lists of one length, and times that rise")
+                .remedy(again));
+        }
+    }
+    Ok(found)
 }
 
 fn unwritable(why: &str) -> Problem {
@@ -110,4 +123,49 @@ pub fn bands(comparison: &Comparison) -> Result<Vec<u8>, Problem> {
         }
     }
     rows.into_inner().map_err(|error| Problem::new(format!("the table could not be written: {error}")))
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::compare::{self, Request, Run, curves::Trace};
+    use crate::export::sample;
+
+    fn comparison() -> Comparison {
+        let trace = Trace { time_s: vec![0.0, 1.0, 2.0], thrust_n: vec![0.0, 50.0, 0.0], burn_time_s: 1.9 };
+        let runs: Vec<Run> = ["A", "B"]
+            .map(|id| {
+                let mut firing = sample::firing();
+                firing.run.id = id.into();
+                firing.run.pour = Some("P".into());
+                firing.checks.clear();
+                Run { firing, trace: Some(trace.clone()) }
+            })
+            .into();
+        let request = Request {
+            by: "pour".into(),
+            leave_out: vec![],
+            alike_within: 0.05,
+            with_failed: false,
+            by_burn_time: false,
+        };
+        compare::compare(&runs, &request).expect("a comparison")
+    }
+
+    #[test]
+    fn what_was_written_reads_back() {
+        let c = comparison();
+        assert_eq!(read(&pretty(&c).expect("text")).expect("the comparison"), c);
+        assert!(!line(&c).expect("a line").contains('\n'));
+    }
+
+    #[test]
+    fn a_damaged_band_is_refused() {
+        let mut c = comparison();
+        if let Some(band) = &mut c.groups[0].thrust_band {
+            band.mean_n.pop();
+        }
+        let text = serde_json::to_string(&c).expect("text");
+        assert!(read(&text).expect_err("damage").found.contains("is damaged"));
+    }
 }

@@ -66,23 +66,18 @@ fn inputs(v: &Vehicle, cp_m: Measured, propellant: Measured) -> [Measured; 14] {
     ]
 }
 
+/// Margins in calibres, and centres of gravity, m: loaded, with `burned` of the propellant gone, and empty.
+fn margins(x: &[f64; 14], burned: f64) -> ([f64; 3], [f64; 3]) {
+    let [d, airframe, airframe_cg, cp, hardware, hardware_cg, propellant_cg, propellant, ..] = *x;
+    let cg_m = [1.0, 1.0 - burned, 0.0].map(|left| {
+        (airframe * airframe_cg + hardware * hardware_cg + left * propellant * propellant_cg)
+            / (airframe + hardware + left * propellant)
+    });
+    (cg_m.map(|cg| (cp - cg) / d), cg_m)
+}
+
 fn outcome(v: &Vehicle, x: &[f64; 14], thrust: &Thrust, factor: f64) -> Result<Outcome, Stays> {
-    let [
-        d,
-        airframe,
-        airframe_cg,
-        cp,
-        hardware,
-        hardware_cg,
-        propellant_cg,
-        propellant,
-        length,
-        spacing,
-        foot,
-        elevation,
-        g,
-        temperature,
-    ] = *x;
+    let [d, airframe, _, cp, hardware, _, _, propellant, length, spacing, foot, elevation, g, temperature] = *x;
     let mass = airframe + hardware + propellant;
     let area = 0.25 * std::f64::consts::PI * d * d;
     let density = atmosphere::density_kg_m3(v.site.height_m, temperature);
@@ -97,12 +92,7 @@ fn outcome(v: &Vehicle, x: &[f64; 14], thrust: &Thrust, factor: f64) -> Result<O
         thrust_factor: factor,
     };
     let exit = rail::leave(thrust, &launch)?;
-    let cg = |left: f64| {
-        (airframe * airframe_cg + hardware * hardware_cg + left * propellant * propellant_cg)
-            / (airframe + hardware + left * propellant)
-    };
-    let cg_m = [cg(1.0), cg(1.0 - exit.burned), cg(0.0)];
-    let margin = cg_m.map(|c| (cp - c) / d);
+    let (margin, cg_m) = margins(x, exit.burned);
     Ok(Outcome {
         thrust_to_weight: exit.mean_thrust_n / (mass * g),
         cp_m: cp,
@@ -168,11 +158,10 @@ pub fn check(v: &Vehicle, source: &Source) -> Result<Preflight, Problem> {
         for (k, m) in list.iter().enumerate() {
             x[k] += z[k] * m.standard_uncertainty.unwrap_or(0.0);
         }
-        // A vehicle that stays on the rail meets no limit.
-        let found = outcome(v, &x, &source.thrust, 1.0 + z[14] * thrust_u).unwrap_or_else(|_| Outcome {
-            margin: [f64::MIN / 4.0; 3],
-            smallest: f64::MIN / 4.0,
-            ..Outcome::default()
+        // A vehicle that stays on the rail has no speed and no thrust to weight; its margin is the worse one of full and empty.
+        let found = outcome(v, &x, &source.thrust, 1.0 + z[14] * thrust_u).unwrap_or_else(|_| {
+            let (margin, _) = margins(&x, 0.0);
+            Outcome { margin, smallest: margin[0].min(margin[2]), ..Outcome::default() }
         });
         out.copy_from_slice(&[
             found.exit.speed_m_s,

@@ -9,7 +9,11 @@ pub struct Thrust {
 }
 
 impl Thrust {
-    pub fn new(time_s: Vec<f64>, thrust_n: Vec<f64>) -> Self {
+    /// Times must rise; what one list is longer than the other is dropped.
+    pub fn new(mut time_s: Vec<f64>, mut thrust_n: Vec<f64>) -> Self {
+        let n = time_s.len().min(thrust_n.len());
+        time_s.truncate(n);
+        thrust_n.truncate(n);
         let mut impulse_n_s = Vec::with_capacity(time_s.len());
         let mut sum = 0.0;
         for i in 0..time_s.len() {
@@ -103,8 +107,8 @@ const STEP_S: f64 = 1e-3;
 pub fn leave(thrust: &Thrust, launch: &Launch) -> Result<Exit, Stays> {
     let (time, force) = thrust.points();
     let total = thrust.total_impulse_n_s();
-    let holding =
-        launch.gravity_m_s2 * (launch.elevation_rad.sin() + launch.friction_coefficient * launch.elevation_rad.cos());
+    let holding = launch.gravity_m_s2
+        * (launch.elevation_rad.sin() + launch.friction_coefficient * launch.elevation_rad.cos().abs());
     let state = |k: usize, t: f64, v: f64| -> f64 {
         let (f, impulse) = thrust.within(k, t);
         let mass = launch.mass_kg - launch.propellant_kg * if total > 0.0 { impulse / total } else { 0.0 };

@@ -137,6 +137,12 @@ fn dots(canvas: &Canvas<'_>, groups: &[&Group], units: Units) -> Result<(), Prob
     if present.is_empty() {
         return Ok(());
     }
+    canvas.text(
+        "dots: firings, in % off the group's mean where groups lie far apart; bars: 95 % interval of the mean",
+        (LEFT - 80, DOTS_TOP - 54),
+        Anchor::Left,
+        Look { size: 22.0, ..SMALL },
+    )?;
     let width = (RIGHT - LEFT + 100) / present.len() as i32;
     for (k, (key, name)) in present.iter().enumerate() {
         let from = LEFT - 100 + k as i32 * width;
@@ -159,7 +165,7 @@ fn dots(canvas: &Canvas<'_>, groups: &[&Group], units: Units) -> Result<(), Prob
             DOTS_END - (((v - low) / (high - low)).clamp(0.0, 1.0) * f64::from(DOTS_END - DOTS_TOP)).round() as i32
         };
         let title = if own {
-            format!("{name}, % off own mean")
+            format!("{name}, %")
         } else if unit.symbol.is_empty() {
             (*name).to_string()
         } else {

@@ -12,7 +12,7 @@ pub const PNG_FILE: &str = "preflight.png";
 
 const LEFT: i32 = 130;
 const RIGHT: i32 = WIDTH - 40;
-const TOP: i32 = 150;
+const TOP: i32 = 164;
 const BOTTOM: i32 = 440;
 /// Axis of the side view, and the ruler below it.
 const AXIS: i32 = 600;
@@ -37,6 +37,8 @@ pub fn preflight_svg(v: &Vehicle, p: &Preflight, units: Units) -> Result<String,
     };
     canvas.text(&shortened(&p.vehicle, 26), (LEFT, 42), Anchor::Left, Look { size: TITLE, ..bold })?;
     canvas.text(verdict, (RIGHT, 42), Anchor::Right, Look { size: TITLE, ..bold })?;
+    let caution = "on paper, by these limits only; local law and the range's safety code rule";
+    canvas.text(caution, (LEFT, 136), Anchor::Left, Look { size: 22.0, ..SMALL })?;
     speed(&canvas, p, units)?;
     side_view(&canvas, v, p)?;
     canvas.finish()?;
