@@ -260,6 +260,11 @@ fn never_a_go_without_what_it_needs() {
         (with_mass, &short, "spent before the forward guide"),
         (no_cp, "reduced/BW1-1", "cp is missing"),
         (v.replace("count = 4", "count = 6"), "reduced/BW1-1", "6 fins"),
+        (v.replace("1.38 ± 0.005 m", "13.8 m"), "reduced/BW1-1", "hardware_cg at 13.800 m"),
+        (v.replace("drag_coefficient = 0.6", "cp = \"16.2 m\""), "reduced/BW1-1", "cp at 16.200 m"),
+        (v.replace("1.62 m", "1.5 m"), "reduced/BW1-1", "a fin root's end at 1.610 m"),
+        (v.replace("79 ± 0.3 mm", "7.9 ± 0.03 mm"), "reduced/BW1-1", "the shapes are 79.0 mm wide"),
+        (v.replace("tip_chord = \"0.09 m\"", "tip_chord = \"-0.09 m\""), "reduced/BW1-1", "a tip chord below nil"),
         (v.replace("3.42 ± 0.02 kg", "3.42 ± 0.02"), "reduced/BW1-1", "airframe_mass"),
         (v.replace("wind =", "wnd ="), "reduced/BW1-1", "wnd"),
         (v.clone(), "nowhere", "there is no such"),
@@ -272,4 +277,28 @@ fn never_a_go_without_what_it_needs() {
     assert!(code == Some(1) && complaint.contains("no thrust to check with"), "{complaint}");
     let (code, said, _) = check(&v.replace("[rail]", "propellant_mass = \"463 g\"\n[rail]"), &["--assumed", "600 N"]);
     assert!(code == Some(0) && said.contains("nothing was measured"), "{said}");
+}
+
+/// The page stands alone, holds the verdict with what qualifies it and the cautions, and a hostile name stays text.
+#[test]
+fn the_page_says_what_the_screen_says() {
+    let dir = tempfile::tempdir().expect("a folder");
+    let file = dir.path().join("vehicle.toml");
+    std::fs::write(&file, vehicle().replace("Reedling 2", "<img src=x>")).expect("a vehicle");
+    let out = dir.path().join("out");
+    let made = burntally(reduced())
+        .arg("preflight")
+        .arg(&file)
+        .args(["--thrust", "reduced/BW1-1", "--out"])
+        .arg(&out)
+        .output()
+        .expect("it runs");
+    assert!(matches!(made.status.code(), Some(0 | 3)));
+    let html = std::fs::read_to_string(out.join("preflight.html")).expect("a page");
+    for text in ["<svg", "one firing only", "safety code", "common practice, no source"] {
+        assert!(html.contains(text), "{text}");
+    }
+    let verdict = if made.status.code() == Some(0) { "GO, QUALIFIED" } else { "NO-GO" };
+    assert!(html.contains(verdict), "{verdict}");
+    assert!(!html.contains("<img") && html.contains("&lt;img") && !html.contains("<script"));
 }

@@ -12,11 +12,11 @@ use crate::preflight::vehicle::Vehicle;
 use crate::preflight::{Source, check, parse};
 use crate::problem::Problem;
 use crate::quantity::{self, Dimension, Measured};
-use crate::report::{plot, preflight_plot, preflight_summary, summary};
+use crate::report::{plot, preflight_page, preflight_plot, preflight_summary, summary};
 use std::path::Path;
 
 const FILE: &str = "preflight.json";
-const FILES: [&str; 3] = [FILE, preflight_plot::SVG_FILE, preflight_plot::PNG_FILE];
+const FILES: [&str; 4] = [FILE, preflight_page::FILE, preflight_plot::SVG_FILE, preflight_plot::PNG_FILE];
 const RESULT: &str = "result.json";
 
 pub fn run(arguments: &PreflightArguments) -> Ending {
@@ -47,6 +47,10 @@ fn preflight(arguments: &PreflightArguments) -> Result<Ending, Problem> {
     let mut made = vec![OutputFile::new(FILE, text + "\n")];
     if !arguments.no_pictures {
         let svg = preflight_plot::preflight_svg(&vehicle, &found, arguments.common.units.into())?;
+        made.push(OutputFile::new(
+            preflight_page::FILE,
+            preflight_page::page(&found, Some(&svg), arguments.common.units.into())?,
+        ));
         made.push(OutputFile::new(preflight_plot::PNG_FILE, plot::png(&svg)?));
         made.push(OutputFile::new(preflight_plot::SVG_FILE, svg));
     }

@@ -3,6 +3,7 @@
 pub mod atmosphere;
 pub mod check;
 pub mod parse;
+pub mod places;
 pub mod pressure_centre;
 pub mod rail;
 pub mod vehicle;

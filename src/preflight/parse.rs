@@ -1,7 +1,7 @@
 //! vehicle.toml to [`Vehicle`]: every key checked, every refusal with its line and what to write instead.
 
-use super::atmosphere;
 use super::vehicle::{Fins, Limits, Motor, Nose, NoseShape, Rail, Shape, Site, Transition, Vehicle};
+use super::{atmosphere, places};
 use crate::problem::Problem;
 use crate::quantity::{Dimension, Measured, STANDARD_GRAVITY_M_S2};
 use crate::run::document::{Document, Table};
@@ -53,7 +53,7 @@ fn vehicle(document: &Document) -> Result<Vehicle, Problem> {
                 .expected("some 0.4 to 0.8 for a slender vehicle"),
         ));
     }
-    Ok(Vehicle {
+    let vehicle = Vehicle {
         name: v.text("name")?.map_or_else(|| "vehicle".into(), |f| f.value),
         diameter_m: needed(&v, "diameter", Dimension::Length)?,
         length_m: v.positive("length", Dimension::Length)?,
@@ -71,7 +71,9 @@ fn vehicle(document: &Document) -> Result<Vehicle, Problem> {
         rail: rail(&r)?,
         site: site(root.table("site")?.as_ref())?,
         limits: limits(root.table("limits")?.as_ref())?,
-    })
+    };
+    places::fit_together(&v, &m, &vehicle)?;
+    Ok(vehicle)
 }
 
 fn needed(table: &Table<'_>, key: &str, dimension: Dimension) -> Result<Measured, Problem> {
@@ -142,11 +144,16 @@ fn shape(root: &Table<'_>) -> Result<Option<Shape>, Problem> {
         let signed = |key: &str| -> Result<f64, Problem> {
             Ok(f.quantity(key, Dimension::Length)?.map_or(0.0, |found| found.value.value))
         };
+        let tip_chord_m = signed("tip_chord")?;
+        if tip_chord_m < 0.0 {
+            let problem = Problem::new("a tip chord below nil").expected("nil for a pointed fin, or more");
+            return Err(f.problem_with("tip_chord", problem));
+        }
         fins.push(Fins {
             count: count.value,
             station_m: length(&f, "station")?,
             root_chord_m: length(&f, "root_chord")?,
-            tip_chord_m: signed("tip_chord")?.max(0.0),
+            tip_chord_m,
             exposed_semispan_m: length(&f, "exposed_semispan")?,
             sweep_distance_m: signed("sweep_distance")?,
             body_diameter_m: length(&f, "body_diameter")?,

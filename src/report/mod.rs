@@ -7,6 +7,7 @@ pub mod figures;
 pub mod outputs;
 pub mod page;
 pub mod plot;
+pub mod preflight_page;
 pub mod preflight_plot;
 pub mod preflight_summary;
 pub mod residuals;

@@ -6,7 +6,7 @@ use crate::firing::Status;
 use crate::preflight::{Assumed, Check, Preflight};
 
 /// Words for the checks.
-fn name(id: &str) -> &str {
+pub(super) fn name(id: &str) -> &str {
     match id {
         "rail_exit_speed" => "speed off the rail",
         "thrust_to_weight" => "thrust to weight",
@@ -15,7 +15,7 @@ fn name(id: &str) -> &str {
     }
 }
 
-fn unit(c: &Check) -> &str {
+pub(super) fn unit(c: &Check) -> &str {
     match c.id.as_str() {
         "rail_exit_speed" => "m/s",
         "stability_margin" => "calibres",
@@ -23,15 +23,20 @@ fn unit(c: &Check) -> &str {
     }
 }
 
+/// The verdict, which never stands without what it rests on.
+pub(super) fn verdict(p: &Preflight) -> &'static str {
+    match (p.verdict == "go", p.qualifications.is_empty()) {
+        (true, true) => "GO by the limits below",
+        (true, false) => "GO, QUALIFIED",
+        (false, _) => "NO-GO",
+    }
+}
+
 /// The summary, ending in a line feed.
 pub fn summary(p: &Preflight, view: View, written: &str) -> String {
     let mut lines = Vec::new();
     let go = p.verdict == "go";
-    let verdict = match (go, p.qualifications.is_empty()) {
-        (true, true) => "GO by the limits below".to_string(),
-        (true, false) => "GO, QUALIFIED".to_string(),
-        (false, _) => "NO-GO".to_string(),
-    };
+    let verdict = verdict(p);
     lines.extend(wrapped(&format!("{verdict}  ({}; {})", plain(&p.vehicle), plain(&p.thrust_source)), "", "  "));
     if go && !p.qualifications.is_empty() {
         lines.push("  the limits below are met, but:".into());
