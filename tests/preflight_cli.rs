@@ -111,10 +111,13 @@ fn sources_of_one_curve_agree() {
     // What is not known of it qualifies the go.
     let told = plain["qualifications"].to_string();
     assert!(told.contains("not known"), "{told}");
-    assert!(
-        number(&folder["rail"]["exit_speed"]["standard_uncertainty"])
-            > number(&plain["rail"]["exit_speed"]["standard_uncertainty"])
-    );
+    for key in ["exit_speed", "exit_time", "mean_thrust"] {
+        // Nobody said how far the plain curve may be off.
+        assert!(plain["rail"][key]["interval_95"].is_null(), "{key}");
+        assert!(folder["rail"][key]["interval_95"].is_array(), "{key}");
+    }
+    assert!(limit(&plain, "thrust_to_weight")["probability_met"].is_null());
+    assert!(limit(&plain, "stability_margin")["probability_met"].is_number());
 }
 
 /// A table of 60 rows and one of 400 give one exit speed.
@@ -157,7 +160,10 @@ fn figures_hang_together() {
     let smallest = number(&s["margin_at_exit"]).min(number(&s["margin_burnout"]));
     assert_eq!(number(&s["margin_minimum"]), smallest);
     let exit = number(&rail["exit_speed"]["value"]);
-    assert!((number(&p["wind_angle_at_exit_deg"]) - (4.0 / exit).atan().to_degrees()).abs() < 1e-9);
+    // A level wind of 4 m/s from behind on a rail of 86 deg.
+    let rail_rad = 86f64.to_radians();
+    let angle = (4.0 * rail_rad.sin() / (exit - 4.0 * rail_rad.cos())).atan().to_degrees();
+    assert!((number(&p["wind_angle_at_exit_deg"]) - angle).abs() < 1e-9);
     // Impulse on momentum: without drag and with falling mass the speed lies between those of the lightest and the heaviest vehicle.
     let net = number(&rail["mean_thrust"]["value"]) * number(&rail["exit_time"]["value"]);
     assert!(exit < net / (mass - 0.4632) && exit > (net - weight * number(&rail["exit_time"]["value"])) / mass * 0.98);

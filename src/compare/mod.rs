@@ -1,6 +1,7 @@
 //! Several firings held against each other: spread, components, differences, odd ones, curves, trends. Pure: same firings, same numbers.
 
 pub mod components;
+mod criteria;
 pub mod curves;
 mod group;
 pub mod outliers;
@@ -248,7 +249,7 @@ pub fn compare(runs: &[Run], request: &Request) -> Result<Comparison, Problem> {
         curve_differences: group::curve_differences(&members, request.by_burn_time),
         trends: group::trends(&members),
         burn_rate_law: group::burn_rate_law(&members),
-        criteria: groups.iter().flat_map(group::criteria).collect(),
+        criteria: groups.iter().flat_map(criteria::criteria).collect(),
         variance_components: BTreeMap::new(),
         between_pours: BTreeMap::new(),
         groups,

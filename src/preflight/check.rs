@@ -147,6 +147,7 @@ pub fn check(v: &Vehicle, source: &Source) -> Result<Preflight, Problem> {
         findings.push(format!("taken as exact, since no error is stated: {}", exact.join(", ")));
     }
     findings.push(format!("gravity {:.5} m/s²: {}", v.site.gravity_m_s2.value, v.site.gravity_source));
+    findings.extend(v.defaults.iter().cloned());
     if v.drag_coefficient.is_none() {
         findings.push("no drag on the rail: no drag_coefficient is given".into());
     }
@@ -172,7 +173,12 @@ pub fn check(v: &Vehicle, source: &Source) -> Result<Preflight, Problem> {
             x[8] - x[9] - x[10],
         ]);
     });
-    let q = |k: usize, value: f64, unit: &str| figure(value, unit, &trials[k]);
+    // Trials without the thrust's error say nothing of what depends on it.
+    let known = |k: usize| source.relative_u.is_some() || !THRUST_OUTPUTS.contains(&k);
+    let q = |k: usize, value: f64, unit: &str| {
+        let found = figure(value, unit, &trials[k]);
+        if known(k) { found } else { Figure { standard_uncertainty: None, interval_95: None, ..found } }
+    };
     let rail = RailFigures {
         effective_length: q(5, v.rail.effective_length_m(), "m"),
         exit_speed: q(0, now.exit.speed_m_s, "m/s"),
@@ -190,8 +196,8 @@ pub fn check(v: &Vehicle, source: &Source) -> Result<Preflight, Problem> {
             unit: unit.to_string(),
             limit: limit.0,
             limit_source: if limit.1 { "vehicle.toml".into() } else { "common practice, no source".into() },
-            interval_95: figure(value, unit, &trials[k]).interval_95,
-            probability_met: met,
+            interval_95: q(k, value, unit).interval_95,
+            probability_met: known(k).then_some(met),
             status: if met >= CONFIDENCE && value >= limit.0 { Status::Pass } else { Status::Fail },
         }
     };
@@ -215,7 +221,7 @@ pub fn check(v: &Vehicle, source: &Source) -> Result<Preflight, Problem> {
     }
     let mut qualifications = source.qualifications.clone();
     if source.relative_u.is_none() {
-        qualifications.push("the thrust's error is not known and counts nowhere".into());
+        qualifications.push("the thrust's error is not known: no interval and no probability for what depends on it, only the other errors are held against the limits".into());
     }
     let go = checks.iter().all(|c| c.status == Status::Pass);
     let fixes = if go { Vec::new() } else { fixes(v, &values, source, &now, &checks) };
@@ -248,7 +254,7 @@ pub fn check(v: &Vehicle, source: &Source) -> Result<Preflight, Problem> {
             margin_burnout: now.margin[2],
             margin_minimum: now.smallest,
         },
-        wind_angle_at_exit_deg: v.site.wind_m_s.map(|w| w.atan2(now.exit.speed_m_s).to_degrees()),
+        wind_angle_at_exit_deg: v.site.wind_m_s.map(|w| wind_angle_deg(w, now.exit.speed_m_s, values[11])),
         mean_of_group: source.mean.as_ref().and_then(|t| assumed(v, &values, t)),
         assumed: None,
         findings,
@@ -257,7 +263,17 @@ pub fn check(v: &Vehicle, source: &Source) -> Result<Preflight, Problem> {
     })
 }
 
+/// Angle of attack as the guides let go, deg: of a level wind from behind, which is the worse side of an inclined rail.
+///
+/// # Formula
+/// atan(w sin θ/(v − w cos θ))
+pub fn wind_angle_deg(wind_m_s: f64, speed_m_s: f64, elevation_rad: f64) -> f64 {
+    (wind_m_s * elevation_rad.sin()).atan2(speed_m_s - wind_m_s * elevation_rad.cos()).to_degrees()
+}
+
 const OUTPUTS: usize = 6;
+/// Those that hang on the thrust: exit speed and time, mean thrust, thrust to weight. The margin hardly does.
+const THRUST_OUTPUTS: [usize; 4] = [0, 1, 2, 3];
 
 fn nominal_launch(v: &Vehicle, x: &[f64; 14]) -> Launch {
     Launch {

@@ -47,7 +47,8 @@ pub struct Check {
     pub limit: f64,
     pub limit_source: String,
     pub interval_95: Option<[f64; 2]>,
-    pub probability_met: f64,
+    /// Null where the thrust's error is not known and the check depends on it: the status then rests on the other errors alone.
+    pub probability_met: Option<f64>,
     pub status: Status,
 }
 

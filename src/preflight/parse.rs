@@ -53,6 +53,23 @@ fn vehicle(document: &Document) -> Result<Vehicle, Problem> {
                 .expected("some 0.4 to 0.8 for a slender vehicle"),
         ));
     }
+    let site_table = root.table("site")?;
+    let mut defaults = Vec::new();
+    if !r.has("elevation_angle") {
+        defaults.push("no elevation_angle is given: the rail is taken as upright".to_string());
+    }
+    if !r.has("foot_clearance") {
+        defaults.push("no foot_clearance is given: the aft guide is taken to stand at the rail's foot".to_string());
+    }
+    if drag_coefficient.is_some() {
+        let given = |key: &str| site_table.as_ref().is_some_and(|t| t.has(key));
+        if !given("height") {
+            defaults.push("no height is given: the air's density is that of sea level".to_string());
+        }
+        if !given("temperature") {
+            defaults.push("no temperature is given: that of the standard atmosphere is taken".to_string());
+        }
+    }
     let vehicle = Vehicle {
         name: v.text("name")?.map_or_else(|| "vehicle".into(), |f| f.value),
         diameter_m: needed(&v, "diameter", Dimension::Length)?,
@@ -69,8 +86,9 @@ fn vehicle(document: &Document) -> Result<Vehicle, Problem> {
             propellant_mass_kg: m.positive("propellant_mass", Dimension::Mass)?,
         },
         rail: rail(&r)?,
-        site: site(root.table("site")?.as_ref())?,
+        site: site(site_table.as_ref())?,
         limits: limits(root.table("limits")?.as_ref())?,
+        defaults,
     };
     places::fit_together(&v, &m, &vehicle)?;
     Ok(vehicle)

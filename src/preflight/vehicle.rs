@@ -23,6 +23,8 @@ pub struct Vehicle {
     pub rail: Rail,
     pub site: Site,
     pub limits: Limits,
+    /// What was not given and taken as something, one sentence each.
+    pub defaults: Vec<String>,
 }
 
 /// Outline and fins.

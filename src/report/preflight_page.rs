@@ -1,6 +1,6 @@
 //! preflight.html: the check before a flight on one page that stands alone, readable on a phone, in light and in dark.
 
-use super::preflight_summary::{name, unit, verdict};
+use super::preflight_summary::{name, probability, unit, verdict};
 use super::units::{Units, significant};
 use crate::firing::Status;
 use crate::preflight::{Assumed, Preflight};
@@ -43,7 +43,7 @@ fn content(p: &Preflight, svg: Option<&str>, units: Units) -> Value {
             let met = c.status == Status::Pass;
             context! {
                 name => name(&c.id), value => said(c.value), limit => said(c.limit), source => c.limit_source.as_str(), interval,
-                probability => if c.probability_met > 0.9995 { "above 0.999".to_string() } else { format!("{:.3}", c.probability_met) },
+                probability => probability(c),
                 class => if met { "pass" } else { "fail" }, mark => if met { "met" } else { "NOT MET" }, fix => fix.join("; "),
             }
         })

@@ -145,18 +145,24 @@ fn side_view(canvas: &Canvas<'_>, v: &Vehicle, p: &Preflight) -> Result<(), Prob
     let (low, high) = (cgs.iter().copied().fold(f64::INFINITY, f64::min), cgs.iter().copied().fold(0.0, f64::max));
     canvas.rectangle([(x(low) - 2, RULER - 12), (x(high) + 2, RULER - 2)], palette::STRONG)?;
     let middle = (x(low) + x(high)) / 2;
-    canvas.line(vec![(middle, RULER + 44), (middle, RULER - 2)], 2, palette::STRONG)?;
-    canvas.line(vec![(x(s.cp_m), RULER - 24), (x(s.cp_m), RULER + 44)], 5, palette::BRICK)?;
+    // Ticks end on the ruler, so that they strike no number through.
+    canvas.line(vec![(x(s.cp_m), RULER - 34), (x(s.cp_m), RULER)], 6, palette::BRICK)?;
+    canvas.text(
+        "guides: spacing to scale, place not given",
+        (LEFT, AXIS + 62),
+        Anchor::Left,
+        Look { size: 21.0, ..SMALL },
+    )?;
     // Names on two lines, so that they never meet.
     let named = |text: &str, at: i32, y: i32| -> Result<(), Problem> {
         let half = canvas.text_width(text, INK.size, false) / 2 + 6;
         canvas.text(text, (at.min(RIGHT - half).max(LEFT + half), y), Anchor::Centre, INK)
     };
-    named(&format!("centre of gravity {} to {} m", fixed(low, 3), fixed(high, 3)), middle, RULER + 60)?;
+    named(&format!("centre of gravity {} to {} m (bar)", fixed(low, 3), fixed(high, 3)), middle, RULER + 60)?;
     let mut pressure = format!("centre of pressure {} m", fixed(s.cp_m, 3));
     if let Some(side) = s.cp_side_area_m {
-        canvas.line(vec![(x(side), RULER - 30), (x(side), RULER + 10)], 3, palette::BRICK)?;
-        pressure.push_str(&format!(", by side area {} m", fixed(side, 3)));
+        canvas.stroked(&[(x(side), RULER - 40), (x(side), RULER)], 4, palette::BRICK, Stroke::Dashed)?;
+        pressure.push_str(&format!(", by side area {} m (dashed)", fixed(side, 3)));
     }
     named(&pressure, x(s.cp_m), RULER + 92)
 }

@@ -32,6 +32,15 @@ pub(super) fn verdict(p: &Preflight) -> &'static str {
     }
 }
 
+/// The probability that a limit is met, in words.
+pub fn probability(c: &Check) -> String {
+    match c.probability_met {
+        None => "not known".into(),
+        Some(p) if p > 0.9995 => "above 0.999".into(),
+        Some(p) => format!("{p:.3}"),
+    }
+}
+
 /// The summary, ending in a line feed.
 pub fn summary(p: &Preflight, view: View, written: &str) -> String {
     let mut lines = Vec::new();
@@ -57,8 +66,7 @@ pub fn summary(p: &Preflight, view: View, written: &str) -> String {
         };
         let value = format!("{} {}{speed}", significant(c.value, 4), unit(c));
         lines.push(format!("  {:<18} {}, 95 % {interval}", name(&c.id), value.trim()));
-        let probability =
-            if c.probability_met > 0.9995 { "above 0.999".into() } else { format!("{:.3}", c.probability_met) };
+        let probability = probability(c);
         let text = format!("{mark}: {} asked ({}), probability {probability}", significant(c.limit, 4), c.limit_source);
         lines.push(format!("    {text}"));
     }
@@ -70,7 +78,7 @@ pub fn summary(p: &Preflight, view: View, written: &str) -> String {
     let t = &p.thrust_to_weight;
     lines.extend(wrapped(
         &format!(
-            "thrust to weight: {} over the rail, {} at peak, {} at the lowest on the rail; {}",
+            "thrust to weight: {} over the rail, {} at peak, {} at the lowest on the rail (1 where the thrust is still rising as it lifts); {}",
             significant(t.rail_average, 3),
             significant(t.peak, 3),
             significant(t.lowest_on_rail, 3),
