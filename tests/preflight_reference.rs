@@ -192,3 +192,24 @@ fn four_fins_by_hand() {
     let cp = barrowman(&Shape { nose: n, transitions: vec![], fins: vec![f] }, 0.1).expect("a centre");
     assert!((cp - 0.791_194).abs() < 1e-6, "{cp}");
 }
+
+/// By hand. Ogive of 0.3 m: 2 at 0.466·0.3 = 0.1398 m. Three fins, chords 0.15 and 0.05 m, span 0.1 m, swept by 0.1 m, at 0.85 m on a body of 0.1 m: mid-chord
+/// line √(0.1² + 0.05²), (1 + 0.05/0.15) 12/(1 + √2.25) = 6.4 at 0.85 + (0.1/3)(0.25/0.2) + (0.2 − 0.0375)/6 = 0.91875 m; whole
+/// (0.2796 + 5.88)/8.4 = 0.733286 m.
+#[test]
+fn three_fins_by_hand() {
+    let n = Nose { shape: NoseShape::Ogive, length_m: 0.3, diameter_m: 0.1 };
+    let f = Fins {
+        count: 3,
+        station_m: 0.85,
+        root_chord_m: 0.15,
+        tip_chord_m: 0.05,
+        exposed_semispan_m: 0.1,
+        sweep_distance_m: 0.1,
+        body_diameter_m: 0.1,
+    };
+    let part = fins(&f, 0.1);
+    assert!((part.slope - 6.4).abs() < 1e-9 && (part.station_m - 0.91875).abs() < 1e-9, "{part:?}");
+    let cp = barrowman(&Shape { nose: n, transitions: vec![], fins: vec![f] }, 0.1).expect("a centre");
+    assert!((cp - 0.733_286).abs() < 1e-6, "{cp}");
+}
