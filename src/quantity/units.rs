@@ -114,7 +114,7 @@ pub fn find(text: &str) -> Option<Unit> {
         "°F" => "degF",
         "°" | "º" => "deg",
         "lbs" => "lb",
-        "counts" => "count",
+        "counts" | "cnt" | "cnts" => "count",
         "sec" => "s",
         other => other,
     };
@@ -141,6 +141,11 @@ pub fn nearest(text: &str, dimension: Option<Dimension>) -> Vec<&'static str> {
 
 /// The refusal of a unit that is not known: names the nearest ones, else those of the dimension wanted.
 pub fn unknown_unit(text: &str, dimension: Option<Dimension>) -> Problem {
+    if text.contains("FILL IN") {
+        return Problem::new("this place is not filled in yet")
+            .expected(dimension.map_or("a unit", Dimension::words))
+            .remedy("put in what was measured; the comment beside it says what belongs there");
+    }
     let mut close = nearest(text, dimension);
     if close.is_empty() {
         close = nearest(text, None);
@@ -219,5 +224,12 @@ mod tests {
         assert_eq!(nearest("kn", None).first(), Some(&"kN"));
         let text = unknown_unit("grm", Some(Dimension::Mass)).to_string();
         assert!(text.contains("did you mean g"), "{text}");
+    }
+
+    #[test]
+    fn a_place_not_filled_in_is_told_as_such() {
+        assert_eq!(find("cnt").map(|unit| unit.symbol), Some("count"));
+        assert!(unknown_unit("FILL IN: count, V", None).found.contains("not filled in"));
+        assert!(unknown_unit("furlong", None).found.contains("not known"));
     }
 }

@@ -26,14 +26,15 @@ impl<'a> Table<'a> {
             return Ok(Some(*meaning));
         }
         let names: Vec<&str> = words.iter().map(|(word, _)| *word).collect();
-        let nearest = names
-            .iter()
-            .max_by(|a, b| strsim::jaro_winkler(&found.value, a).total_cmp(&strsim::jaro_winkler(&found.value, b)));
+        // Below this the nearest word is no help.
+        let likeness = |name: &str| strsim::jaro_winkler(&found.value, name);
+        let nearest =
+            names.iter().filter(|name| likeness(name) > 0.75).max_by(|a, b| likeness(a).total_cmp(&likeness(b)));
         let problem = Problem::new(format!("{} is \"{}\"", self.full(key), found.value))
             .expected(format!("one of: {}", names.join(", ")));
         let problem = match nearest {
             Some(name) => problem.remedy(format!("write {key} = \"{name}\", if that is what it means")),
-            None => problem,
+            None => problem.remedy(format!("write {key} with one of these words")),
         };
         Err(self.problem_at(&found.span, problem))
     }
