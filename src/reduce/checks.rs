@@ -401,7 +401,7 @@ fn mass(c: &mut Checks, record: &Record<'_>, zero: &Zero, figures: &Figures) {
             "propellant_mass",
             Status::Caution,
             format!(
-                "not weighed: {kg:.4} kg ± {:.4} kg from the weight that left the stand, which is not independent of the cell and counts drift as mass",
+                "not weighed: {kg:.4} kg ± {:.4} kg from the weight that left the stand, which is not independent of the cell. Warmth of the cell after ignition passes for mass and is not in the ±: it may be several per cent off",
                 1.96 * u
             ),
         ),
